@@ -1,0 +1,1 @@
+"""The models that ship with Condyle; each file names its sources. Licence: as the project."""

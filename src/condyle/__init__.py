@@ -1,0 +1,46 @@
+"""Condyle: a skeleton sized to one person and posed in every frame of a marker recording.
+
+Each command of the command line is a thin layer over one function here. Names are loaded when they
+are first used, so that importing the package stays light.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import Any
+
+__version__ = "0.1.0"
+
+_HOMES = {
+    "CondyleError": "condyle.model.errors",
+    "calibrate": "condyle.pipeline",
+    "check": "condyle.checking",
+    "demo": "condyle.demonstration",
+    "describe_recording": "condyle.pipeline",
+    "load_skeleton": "condyle.model",
+    "picture": "condyle.pipeline",
+    "read_recording": "condyle.recording",
+    "solve": "condyle.pipeline",
+}
+
+__all__ = [
+    "CondyleError",
+    "calibrate",
+    "check",
+    "demo",
+    "describe_recording",
+    "load_skeleton",
+    "picture",
+    "read_recording",
+    "solve",
+]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'condyle' has no attribute '{name}'")
+    return getattr(import_module(_HOMES[name]), name)
+
+
+def __dir__() -> list[str]:
+    return sorted([*globals(), *_HOMES])
