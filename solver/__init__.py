@@ -1,0 +1,1 @@
+"""Sizing a skeleton to a person and posing it in every frame."""

@@ -1,0 +1,103 @@
+"""Every frame of a trial fitted by itself: postures, what they rest on, and their uncertainty.
+
+A frame's posture depends on that frame's markers alone; neighbours only lend starting points.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from condyle.solver.cold_start import fit_cold
+from condyle.solver.frame_problem import FrameProblem
+from condyle.solver.least_squares import Bounds, Solution, minimise
+from condyle.solver.observability import covariance, undetermined
+from condyle.solver.posture import Posture
+
+FloatArray = NDArray[np.float64]
+BoolArray = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True)
+class FrameFits:
+    """The frames of a trial, each fitted by itself.
+
+    Attributes
+    ----------
+    solution : Solution
+    optimality : (frames,)
+        The projected gradient in standard deviations, evaluated afresh.
+    covariance : (frames, freedoms, freedoms)
+        (J'WJ + prior)^-1 of what is determined, whatever limit is reached; 0 elsewhere.
+    involved : (frames, freedoms) bool
+        Freedoms that nothing determines, by themselves or in combination.
+    at_limit : (frames, freedoms) bool
+    """
+
+    solution: Solution
+    optimality: FloatArray
+    covariance: FloatArray
+    involved: BoolArray
+    at_limit: BoolArray
+
+    @property
+    def posture(self) -> Posture:
+        """The postures found."""
+        return self.solution.posture
+
+
+def fit_frames(
+    problem: FrameProblem, *, seed: int = 0, watch: Callable[[float], None] | None = None
+) -> FrameFits:
+    """Fit every frame from a cold start.
+
+    Parameters
+    ----------
+    problem : FrameProblem
+    seed : int
+        Of the random restarts.
+    watch : callable, optional
+        Told the share of the work done.
+    """
+    bounds = problem.bounds()
+    solution = fit_cold(problem, bounds, seed=seed, watch=watch)
+    rows = np.arange(len(problem))
+    H, _, _ = problem(solution.posture, rows)
+    pins, involved = undetermined(H, ~bounds.pinned)
+    if pins.any():
+        solution = _settled(problem, solution, pins)
+        H, _, _ = problem(solution.posture, rows)
+    unseen = ~problem.seen()
+    free = ~solution.bounds.pinned
+    count = solution.posture.scalars.shape[1]
+    at_limit = (solution.active != 0) & free
+    at_limit[:, :count] &= bounds.lower < bounds.upper
+    return FrameFits(
+        solution,
+        solution.optimality(problem),
+        covariance(H, free),
+        involved | unseen,
+        at_limit,
+    )
+
+
+def _settled(problem: FrameProblem, solution: Solution, pins: BoolArray) -> Solution:
+    """Fit again the frames with undetermined combinations, one freedom of each put to rest."""
+    rows = np.flatnonzero(pins.any(axis=1))
+    bounds = solution.bounds
+    pinned = bounds.pinned | pins
+    bounds = Bounds(bounds.lower, bounds.upper, pinned)
+    part, limits = problem.take(rows), bounds.take(rows)
+    start = solution.posture.take(rows)
+    count = start.scalars.shape[1]
+    scalars = np.where(pins[rows, :count], part.rest().scalars, start.scalars)
+    again = minimise(part, replace(start, scalars=scalars), limits, damping=1e-4)
+    cost, active = solution.cost.copy(), solution.active.copy()
+    iterations, converged = solution.iterations.copy(), solution.converged.copy()
+    cost[rows], active[rows], converged[rows] = again.cost, again.active, again.converged
+    iterations[rows] += again.iterations
+    posture = solution.posture.replaced(rows, again.posture)
+    return Solution(posture, cost, active, iterations, converged, bounds)

@@ -1,0 +1,185 @@
+"""The normal equations of one frame, without ever forming a Jacobian.
+
+With isotropic marker weights, J'WJ is the joint-space inertia matrix of a skeleton whose point
+masses are the marker weights, and J'Wr the joint forces of the forces W r at the markers
+(composite rigid-body algorithm, Featherstone 2008, Rigid Body Dynamics Algorithms, ch. 6). Moments
+and forces are summed once up the tree and projected on the screw of each freedom.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import casadi as ca
+import numpy as np
+from numpy.typing import NDArray
+
+from condyle.model.elementary import Expression
+from condyle.model.kinematics import Kinematics, Screw
+from condyle.model.skeleton import LABORATORY, Skeleton
+from condyle.solver.over_frames import FrameFunction, Replay
+
+FloatArray = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Moments:
+    """Weighted moments of the markers of a subtree, about the laboratory's origin.
+
+    Attributes
+    ----------
+    mass : sum of w
+    first : sum of w p
+    second : sum of w p p', 3x3
+    force, torque : sums of w r and p x (w r)
+    """
+
+    mass: Expression
+    first: Expression
+    second: Expression
+    force: Expression
+    torque: Expression
+
+    def __add__(self, other: Moments) -> Moments:
+        return Moments(
+            self.mass + other.mass,
+            self.first + other.first,
+            self.second + other.second,
+            self.force + other.force,
+            self.torque + other.torque,
+        )
+
+
+NO_MARKERS = Moments(ca.SX(0), ca.SX.zeros(3), ca.SX(3, 3), ca.SX.zeros(3), ca.SX.zeros(3))
+
+
+def _subtree_moments(
+    skeleton: Skeleton, points: Expression, residuals: Expression, weights: Expression
+) -> list[Moments]:
+    moments = [NO_MARKERS] * len(skeleton.segments)
+    for i, marker in enumerate(skeleton.markers):
+        p, w = points[3 * i : 3 * i + 3], weights[i]
+        force = w * residuals[3 * i : 3 * i + 3]
+        own = Moments(w, w * p, w * (p @ p.T), force, ca.cross(p, force))
+        segment = skeleton.segment_index(marker.segment)
+        moments[segment] = moments[segment] + own
+    for i, joint in reversed(list(enumerate(skeleton.joints))):
+        if joint.parent != LABORATORY:
+            parent = skeleton.segment_index(joint.parent)
+            moments[parent] = moments[parent] + moments[i]
+    return moments
+
+
+def _impulse(screw: Screw, moments: Moments) -> tuple[Expression, Expression]:
+    """Linear and angular momentum of the marker masses moving with a screw."""
+    v, a = screw.linear, screw.angular
+    inertia = ca.trace(moments.second) * ca.SX.eye(3) - moments.second
+    linear = moments.mass * v + ca.cross(a, moments.first)
+    return linear, ca.cross(moments.first, v) + inertia @ a
+
+
+class NormalEquations:
+    """H = J'WJ, g = J'Wr and cost = r'Wr / 2 for many frames at once.
+
+    Attributes
+    ----------
+    kinematics : Kinematics
+    pairs : (entries, 2) int
+        Row and column (row >= column) of each stored entry of H; all others are zero.
+    """
+
+    def __init__(self, kinematics: Kinematics) -> None:
+        self.kinematics = kinematics
+        skeleton = kinematics.skeleton
+        measured = ca.SX.sym("measured", 3 * len(skeleton.markers))
+        weights = ca.SX.sym("weights", len(skeleton.markers))
+        points = kinematics.marker_positions
+        residuals = measured - points
+        entries, gradient = self._project(_subtree_moments(skeleton, points, residuals, weights))
+        cost = ca.dot(ca.vec(ca.repmat(weights.T, 3, 1)), residuals**2) / 2
+        self.pairs = np.array(sorted(entries), dtype=np.int64).reshape(-1, 2)
+        values = ca.vertcat(ca.SX(0, 1), *[entries[row, column] for row, column in self.pairs])
+        self.function = ca.Function(
+            "normal_equations",
+            [kinematics.scalars, kinematics.quaternions, measured, weights, kinematics.numbers],
+            [ca.densify(values), ca.densify(gradient), ca.densify(cost)],
+            ["scalars", "quaternions", "measured", "weights", "numbers"],
+            ["entries", "gradient", "cost"],
+            {"cse": True},
+        )
+        self._evaluate: FrameFunction = Replay(self.function)
+
+    def _project(
+        self, moments: list[Moments]
+    ) -> tuple[dict[tuple[int, int], Expression], Expression]:
+        """Entries of H (row >= column) and the vector g, from moments and screws."""
+        ancestors = self._ancestors()
+        entries: dict[tuple[int, int], Expression] = {}
+        gradient = ca.SX.zeros(self.kinematics.freedoms.size)
+        for i, screw in enumerate(self.kinematics.screws):
+            load = moments[screw.joint]
+            gradient[screw.freedom] += ca.dot(screw.linear, load.force) + ca.dot(
+                screw.angular, load.torque
+            )
+            linear, angular = _impulse(screw, load)
+            for j, other in enumerate(self.kinematics.screws):
+                same_joint = other.joint == screw.joint and j <= i
+                if not same_joint and other.joint not in ancestors[screw.joint]:
+                    continue
+                value = ca.dot(other.linear, linear) + ca.dot(other.angular, angular)
+                both = 2 if (i != j and other.freedom == screw.freedom) else 1
+                key = (
+                    max(screw.freedom, other.freedom),
+                    min(screw.freedom, other.freedom),
+                )
+                entries[key] = entries.get(key, ca.SX(0)) + both * value
+        return entries, gradient
+
+    def _ancestors(self) -> list[set[int]]:
+        """For each joint, the joints between its parent segment and the laboratory."""
+        skeleton = self.kinematics.skeleton
+        ancestors: list[set[int]] = []
+        for joint in skeleton.joints:
+            if joint.parent == LABORATORY:
+                ancestors.append(set())
+            else:
+                parent = skeleton.segment_index(joint.parent)
+                ancestors.append(ancestors[parent] | {parent})
+        return ancestors
+
+    def __call__(
+        self,
+        scalars: FloatArray,
+        quaternions: FloatArray,
+        measured: FloatArray,
+        weights: FloatArray,
+        numbers: FloatArray,
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Evaluate for every frame.
+
+        Parameters
+        ----------
+        scalars : (frames, scalars)
+        quaternions : (frames, balls, 4)
+        measured : (frames, markers, 3) m, finite everywhere
+        weights : (frames, markers) 1/m^2, 0 where a marker is missing
+        numbers : (numbers,)
+
+        Returns
+        -------
+        H (frames, n, n), g (frames, n), cost (frames,)
+        """
+        frames = len(scalars)
+        values, gradient, cost = self._evaluate(
+            scalars,
+            quaternions.reshape(frames, -1),
+            measured.reshape(frames, -1),
+            weights,
+            numbers,
+        )
+        size = self.kinematics.freedoms.size
+        H = np.zeros((frames, size, size))
+        rows, columns = self.pairs.T
+        H[:, rows, columns] = values
+        H[:, columns, rows] = values
+        return H, gradient, cost[:, 0]

@@ -1,0 +1,88 @@
+"""Where a fit stands: scalar coordinates and orientations of many frames, and how a step moves them.
+
+Orientations are unit quaternions and a step turns them by a small rotation vector in the child's
+own axes, so nothing here is ever singular.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.spatial.transform import Rotation
+
+FloatArray = NDArray[np.float64]
+
+
+@dataclass(frozen=True, slots=True)
+class Posture:
+    """The freedoms of many frames.
+
+    Attributes
+    ----------
+    scalars : (frames, scalars) rad or m
+    quaternions : (frames, balls, 4)
+        Unit, scalar first: child in the joint's frame.
+    """
+
+    scalars: FloatArray
+    quaternions: FloatArray
+
+    def __len__(self) -> int:
+        return len(self.scalars)
+
+    def take(self, rows: NDArray[np.int64]) -> Posture:
+        """The postures of some frames."""
+        return Posture(self.scalars[rows], self.quaternions[rows])
+
+    def replaced(self, rows: NDArray[np.int64], other: Posture) -> Posture:
+        """A copy in which some frames are taken from `other`."""
+        scalars, quaternions = self.scalars.copy(), self.quaternions.copy()
+        scalars[rows], quaternions[rows] = other.scalars, other.quaternions
+        return Posture(scalars, quaternions)
+
+    def after(self, step: FloatArray) -> Posture:
+        """The posture after a step (frames, scalars + 3 balls): x + dx and R Exp(dr)."""
+        count = self.scalars.shape[1]
+        scalars = self.scalars + step[:, :count]
+        balls = self.quaternions.shape[1]
+        if not balls:
+            return Posture(scalars, self.quaternions)
+        vectors = step[:, count:].reshape(-1, 3)
+        turned = rotations(self.quaternions.reshape(-1, 4)) * Rotation.from_rotvec(vectors)
+        return Posture(scalars, quaternions_of(turned).reshape(-1, balls, 4))
+
+
+def rotations(quaternions: FloatArray) -> Rotation:
+    """A stack of rotations from (n, 4) quaternions, scalar first."""
+    return Rotation.from_quat(quaternions, scalar_first=True)
+
+
+def quaternions_of(stack: Rotation) -> FloatArray:
+    """(n, 4) unit quaternions, scalar first."""
+    return np.asarray(stack.as_quat(scalar_first=True), dtype=np.float64)
+
+
+def upright_posture(scalars: FloatArray, balls: int, frames: int) -> Posture:
+    """`frames` copies of one posture whose orientations are all identity."""
+    identity = np.tile([1.0, 0.0, 0.0, 0.0], (frames, balls, 1))
+    return Posture(np.tile(scalars, (frames, 1)), identity)
+
+
+def inverse_right_jacobian(vectors: FloatArray) -> FloatArray:
+    """(n, 3, 3) d log(R Exp(d)) / d d at d = 0, for rotation vectors log R (n, 3).
+
+    Chirikjian 2011, Stochastic Models, Information Theory, and Lie Groups, vol. 2, eq. 10.86:
+    I + K/2 + (1/t^2 - (1 + cos t) / (2 t sin t)) K^2 with K the cross matrix and t the angle.
+    """
+    angle = np.linalg.norm(vectors, axis=1)
+    half = np.maximum(angle, 1e-12) / 2
+    series = 1 / 12 + angle**2 / 720
+    exact = (1 - half / np.tan(half)) / np.maximum(angle, 1e-12) ** 2
+    coefficient = np.where(angle < 1e-3, series, exact)
+    K = np.zeros((len(vectors), 3, 3))
+    x, y, z = vectors.T
+    K[:, 0, 1], K[:, 0, 2], K[:, 1, 2] = -z, y, -x
+    K[:, 1, 0], K[:, 2, 0], K[:, 2, 1] = z, -y, x
+    return np.asarray(np.eye(3) + K / 2 + coefficient[:, None, None] * (K @ K))

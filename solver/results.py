@@ -1,0 +1,207 @@
+"""What fitting gives back: small frozen things that say their shapes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from condyle.model.skeleton import Skeleton, Vector
+from condyle.solver.posture import Posture
+
+FloatArray = NDArray[np.float64]
+BoolArray = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True)
+class FittedMotion:
+    """The fitted skeleton over a trial with the markers it was fitted to: what a picture needs.
+
+    Attributes
+    ----------
+    name : str
+        The trial's name.
+    frame : (frames,) int, time : (frames,) s
+    up : str
+        The laboratory axis that points up, such as ``+Y``.
+    up_how : str
+        How that was chosen.
+    segment_names : (segments,) str
+    laboratory_from_segment : (frames, segments, 4, 4)
+        m; homogeneous poses, columns on the right.
+    marker_names : (markers,) str
+    measured, fitted : (frames, markers, 3) m
+        Laboratory axes; measured is NaN where missing.
+    used : (frames, markers) bool
+        Whether the marker took part in the fit of that frame.
+    joint_centres : segment -> child segment -> (3,) m
+        The joint centres of its children, in the sized segment.
+    landmarks : segment -> name -> (3,) m
+        In the sized segment.
+    """
+
+    name: str
+    frame: NDArray[np.int64]
+    time: FloatArray
+    up: str
+    segment_names: tuple[str, ...]
+    laboratory_from_segment: FloatArray
+    marker_names: tuple[str, ...]
+    measured: FloatArray
+    fitted: FloatArray
+    used: BoolArray
+    joint_centres: Mapping[str, Mapping[str, FloatArray]]
+    landmarks: Mapping[str, Mapping[str, FloatArray]]
+    up_how: str = ""
+
+    @property
+    def error(self) -> FloatArray:
+        """(frames, markers) m, distance from measured to fitted; NaN where missing."""
+        return np.asarray(np.linalg.norm(self.measured - self.fitted, axis=2))
+
+    def rms_of_frames(self) -> FloatArray:
+        """(frames,) m, RMS error over the used markers; NaN where a frame has none."""
+        squared = np.where(self.used, self.error**2, np.nan)
+        count = self.used.sum(axis=1)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            mean = np.nansum(squared, axis=1) / np.where(count, count, np.nan)
+            return np.asarray(np.sqrt(mean))
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One reported number: a coordinate, an angle of an orientation, or such an angle's sum.
+
+    Attributes
+    ----------
+    name : str
+    unit : "rad" or "m"
+    meaning : str
+        A sentence for `columns.csv`.
+    has_range : bool
+        Whether it has limits, so that being at one can be said.
+    """
+
+    name: str
+    unit: str
+    meaning: str
+    has_range: bool
+
+
+@dataclass(frozen=True, slots=True)
+class TrialFit:
+    """Joint coordinates fitted to one recording, with how well they explain it.
+
+    Attributes
+    ----------
+    motion : FittedMotion
+        Time, poses, measured and fitted markers.
+    rate : float
+        Frames per second.
+    columns : what the columns of the next three are
+    values, sd : (frames, columns) rad or m
+        sd is NaN where undetermined, 0 where held; the value is then at rest or as held.
+    at_limit : (frames, columns) bool
+    why_not : (frames, markers) str
+        Empty where used.
+    other_labels : labels of the recording that the model does not know
+    other_positions : (frames, other labels, 3) m
+    cost, optimality : (frames,)
+        Half the weighted sum of squares; the projected gradient in standard deviations.
+    iterations : (frames,) int
+    converged : (frames,) bool
+    not_observed : column -> number of frames in which nothing determined it
+    """
+
+    motion: FittedMotion
+    rate: float
+    columns: tuple[Column, ...]
+    values: FloatArray
+    sd: FloatArray
+    at_limit: BoolArray
+    why_not: NDArray[np.str_]
+    other_labels: tuple[str, ...]
+    other_positions: FloatArray
+    cost: FloatArray
+    optimality: FloatArray
+    iterations: NDArray[np.int64]
+    converged: BoolArray
+    not_observed: Mapping[str, int]
+
+    def __post_init__(self) -> None:
+        frames = len(self.motion.time)
+        for name in ("values", "sd", "at_limit", "why_not", "cost", "converged"):
+            if len(getattr(self, name)) != frames:
+                raise ValueError(f"{name} has not the {frames} frames of the trial")
+
+    def column(self, name: str) -> int:
+        """Where a column stands."""
+        return next(i for i, column in enumerate(self.columns) if column.name == name)
+
+    def rms(self) -> float:
+        """RMS error (m) over all used marker-frames; NaN where none was used."""
+        used = self.motion.used
+        return float(np.sqrt(np.mean(self.motion.error[used] ** 2))) if used.any() else float("nan")
+
+
+@dataclass(frozen=True, slots=True)
+class PlacedMarker:
+    """Where calibration found a marker, in its sized segment.
+
+    Attributes
+    ----------
+    placed, placed_sd : (x, y, z) m
+    departure : (x, y, z) m or None
+        From the grown nominal place; None where the model names no place.
+    placed_within : float or None
+        m per axis: how far it was expected to depart.
+    """
+
+    name: str
+    placed: Vector
+    placed_sd: Vector
+    departure: Vector | None
+    placed_within: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Calibration:
+    """A skeleton sized to one person, and what that rests on.
+
+    Attributes
+    ----------
+    skeleton : Skeleton
+        Sized: with factors, placed markers, label map and up axis.
+    static : str
+        The static's name.
+    still : (start, end) s
+    up, up_how : str
+    log_scale : float
+        ln of the person's overall scale beside the reference person.
+    posture : name -> rad or m
+        Every reported number in the static.
+    undetermined : names that neither markers nor expectations determine
+    markers : PlacedMarkers
+    without_label, other_labels : markers without a label; labels without a marker
+    cost : float
+    converged : bool
+    own_posture : Posture
+        One frame: the static's.
+    """
+
+    skeleton: Skeleton
+    static: str
+    still: tuple[float, float]
+    up: str
+    up_how: str
+    log_scale: float
+    posture: Mapping[str, float]
+    undetermined: tuple[str, ...]
+    markers: tuple[PlacedMarker, ...]
+    without_label: tuple[str, ...]
+    other_labels: tuple[str, ...]
+    cost: float
+    converged: bool
+    own_posture: Posture

@@ -1,0 +1,198 @@
+"""A sized skeleton and a trial in, joint coordinates for every frame out: the main job.
+
+What comes in is checked here once; the fitting itself knows only arrays.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from condyle.model.errors import FitError
+from condyle.model.growth import (
+    sized_joint_centres,
+    sized_landmarks,
+    sized_marker_at,
+    sized_numbers,
+)
+from condyle.model.skeleton import Skeleton
+from condyle.recording.recording import Recording, is_seen
+from condyle.solver.frame_fit import FrameFits, fit_frames
+from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
+from condyle.solver.matching import (
+    MatchedMarkers,
+    check_scale,
+    choose_up,
+    match_markers,
+    root_alignment,
+)
+from condyle.solver.reported import Reported, report
+from condyle.solver.results import FittedMotion, TrialFit
+from condyle.solver.upright import Upright
+
+FloatArray = NDArray[np.float64]
+
+
+def clipped(recording: Recording, *, start: float | None, end: float | None) -> Recording:
+    """The part of a recording between two times (s, on its own clock, ends included).
+
+    Raises
+    ------
+    FitError
+        If no frame lies between them.
+    """
+    time = recording.time
+    low = -np.inf if start is None else start
+    high = np.inf if end is None else end
+    rows = np.flatnonzero((time >= low - 1e-9) & (time <= high + 1e-9))
+    if not len(rows):
+        raise FitError(
+            f"{recording.source}: no frame lies between {low:g} s and {high:g} s.\n"
+            f"  The recording runs from {time[0]:.3f} s to {time[-1]:.3f} s."
+        )
+    part = slice(int(rows[0]), int(rows[-1]) + 1)
+    return replace(
+        recording,
+        first_frame=recording.first_frame + part.start,
+        positions=recording.positions[part],
+        residuals=recording.residuals[part],
+        cameras=recording.cameras[part],
+    )
+
+
+def fit_trial(
+    skeleton: Skeleton,
+    recording: Recording,
+    *,
+    up: str | None = None,
+    labels: Mapping[str, str] | None = None,
+    start: float | None = None,
+    end: float | None = None,
+    functions: SkeletonFunctions | None = None,
+    watch: Callable[[float], None] | None = None,
+) -> TrialFit:
+    """Fit every frame of a recording.
+
+    Parameters
+    ----------
+    skeleton : Skeleton
+        Sized, or as it stands.
+    up : str, optional
+        The laboratory axis that points up; else chosen, and the choice is said in the result.
+    labels : model marker -> label in the recording, optional
+    start, end : float, optional
+        s, on the recording's own clock.
+    functions : SkeletonFunctions, optional
+        Of the same model, so that several trials share them.
+    watch : callable, optional
+        Told the share of the work done.
+
+    Raises
+    ------
+    FitError
+        If model and recording cannot be brought together.
+    """
+    recording = clipped(recording, start=start, end=end)
+    matched = match_markers(skeleton, recording, labels)
+    functions = functions or SkeletonFunctions(skeleton)
+    check_scale(root_alignment(functions, matched.positions), recording, skeleton)
+    upright = choose_up(functions, recording, matched.positions, asked=up)
+    problem = frame_problem(skeleton, functions, matched.positions, upright)
+    _check_enough(problem, recording, skeleton)
+    fits = fit_frames(problem, watch=watch)
+    return _assembled(skeleton, recording, matched, upright, problem, fits)
+
+
+def frame_problem(
+    skeleton: Skeleton, functions: SkeletonFunctions, positions: FloatArray, upright: Upright
+) -> FrameProblem:
+    """The least-squares problem of marker positions (frames, markers, 3), NaN where missing."""
+    placed = is_seen(sized_marker_at(skeleton))
+    present = is_seen(positions)
+    sd = np.array([marker.sd for marker in skeleton.markers])
+    return FrameProblem(
+        functions,
+        np.where(present[..., None], positions, 0.0),
+        (present & placed) / sd**2,
+        sized_numbers(skeleton, upright.laboratory_from_upright),
+    )
+
+
+def _check_enough(problem: FrameProblem, recording: Recording, skeleton: Skeleton) -> None:
+    """Refuse a trial in which no frame determines anything beyond a point."""
+    most = int((problem.weights > 0).sum(axis=1).max(initial=0))
+    if most < 2:
+        raise FitError(
+            f"{recording.source}: no frame shows more than {most} of the markers that "
+            f"{skeleton.name} has a place for; nothing can be determined from that.\n"
+            "  Check the labels (condyle recording lists them), or give --labels MAP.yaml."
+        )
+
+
+def _assembled(
+    skeleton: Skeleton,
+    recording: Recording,
+    matched: MatchedMarkers,
+    upright: Upright,
+    problem: FrameProblem,
+    fits: FrameFits,
+) -> TrialFit:
+    functions = problem.functions
+    told = report(functions.kinematics, fits)
+    fitted = functions.marker_positions(fits.posture, problem.numbers)
+    placed = is_seen(sized_marker_at(skeleton))
+    motion = FittedMotion(
+        name=recording.name,
+        frame=recording.frame,
+        time=recording.time,
+        up=upright.axis,
+        up_how=upright.how,
+        segment_names=skeleton.segment_names,
+        laboratory_from_segment=functions.poses(fits.posture, problem.numbers),
+        marker_names=skeleton.marker_names,
+        measured=matched.positions,
+        fitted=np.where(placed[:, None], fitted, np.nan),
+        used=problem.weights > 0,
+        joint_centres=sized_joint_centres(skeleton),
+        landmarks=sized_landmarks(skeleton),
+    )
+    return TrialFit(
+        motion=motion,
+        rate=recording.rate,
+        columns=told.columns,
+        values=told.values,
+        sd=told.sd,
+        at_limit=told.at_limit,
+        why_not=_why_not(skeleton, matched, placed),
+        other_labels=matched.other_labels,
+        other_positions=matched.other_positions,
+        cost=fits.solution.cost,
+        optimality=fits.optimality,
+        iterations=fits.solution.iterations,
+        converged=fits.solution.converged,
+        not_observed=_not_observed(told),
+    )
+
+
+def _why_not(
+    skeleton: Skeleton, matched: MatchedMarkers, placed: NDArray[np.bool_]
+) -> NDArray[np.str_]:
+    """(frames, markers) Why a marker took no part in a frame; empty where it did."""
+    present = is_seen(matched.positions)
+    why = np.full(present.shape, "", dtype="<U12")
+    why[~present] = "missing"
+    why[:, ~placed] = "no_place"
+    for i, marker in enumerate(skeleton.markers):
+        if marker.name in matched.without_label and marker.placed is not None:
+            why[:, i] = "static_only"
+    return why
+
+
+def _not_observed(told: Reported) -> dict[str, int]:
+    counts = told.involved.sum(axis=0)
+    return {
+        column.name: int(count) for column, count in zip(told.columns, counts, strict=True) if count
+    }

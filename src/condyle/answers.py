@@ -1,0 +1,179 @@
+"""Each command's answer, for a person or as JSON, and the exit status that goes with it."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+from condyle.checking import CoordinateReport, ModelReport
+from condyle.model.growth import sized_lengths
+from condyle.pipeline import SizedSubject, SolvedTrial
+from condyle.recording.describing import RecordingReport, report_lines
+from condyle.screen import progress, say, show_findings, show_json, show_table
+from condyle.solver.quality import Finding, error_summary
+from condyle.solver.result_files import CAUTION
+
+DONE, NEEDS_A_LOOK = 0, 1
+
+Watch = Callable[[str, float], None]
+
+
+def status_of(findings: Sequence[Finding]) -> int:
+    """1 where anything needs a look, else 0."""
+    return NEEDS_A_LOOK if any(f.needs_look for f in findings) else DONE
+
+
+def _findings(findings: Sequence[Finding]) -> list[dict[str, Any]]:
+    return [{"what": f.what, "do": f.do, "needs_a_look": f.needs_look} for f in findings]
+
+
+def show_recording(report: RecordingReport, *, as_json: bool) -> int:
+    """What a recording holds."""
+    if as_json:
+        show_json(asdict(report))
+    else:
+        for line in report_lines(report):
+            say(line)
+    return DONE
+
+
+def show_model(report: ModelReport, *, as_json: bool) -> int:
+    """A model's tree, coordinates and markers."""
+    if as_json:
+        show_json(report.as_dict())
+        return DONE
+    say(f"{report.name}{' (sized to a person)' if report.sized else ''}: {report.about}")
+    for depth, segment, joint, kind in report.tree:
+        markers = report.markers[segment]
+        count = f"  [{len(markers)} markers]" if markers else ""
+        say(f"{'  ' * (depth + 1)}{segment}  <- {joint} ({kind}){count}")
+    rows = [
+        (c.name, c.joint, _number(c.lower, c.unit), _number(c.upper, c.unit), _rest(c), _told(c))
+        for c in report.coordinates
+    ]
+    show_table("", ["coordinate", "joint", "from", "to", "rest", "markers tell it"], rows)
+    for segment, markers in report.markers.items():
+        if markers:
+            say(f"markers of {segment}: {', '.join(markers)}")
+    if report.without_place:
+        say(f"without a place until a static gives one: {', '.join(report.without_place)}")
+    if report.unseen:
+        say(
+            f"not determined by any marker: {', '.join(report.unseen)} (such a coordinate stays "
+            "at rest, and its sd is empty)"
+        )
+    return DONE
+
+
+def _number(value: float | None, unit: str) -> str:
+    return "" if value is None else f"{value:g} {unit}"
+
+
+def _rest(coordinate: CoordinateReport) -> str:
+    return (
+        coordinate.role if coordinate.role != "free" else _number(coordinate.rest, coordinate.unit)
+    )
+
+
+def _told(coordinate: CoordinateReport) -> str:
+    return "yes" if coordinate.seen else "no"
+
+
+def show_subject(made: SizedSubject, *, as_json: bool) -> int:
+    """What a calibration found."""
+    found = made.calibration
+    lengths = sized_lengths(found.skeleton)
+    placed = [m for m in found.markers if m.departure is not None]
+    rms = math.sqrt(
+        sum(sum(d * d for d in m.departure or ()) for m in placed) / max(len(placed), 1)
+    )
+    if as_json:
+        show_json(
+            {
+                "subject": str(made.output),
+                "up": {"axis": found.up, "how": found.up_how},
+                "still": list(found.still),
+                "lengths": lengths,
+                "factors": {name: asdict(size) for name, size in found.skeleton.sizes.items()},
+                "posture": {
+                    name: value if name.startswith("pelvis_") else math.degrees(value)
+                    for name, value in found.posture.items()
+                },
+                "markers": [asdict(marker) for marker in found.markers],
+                "markers_without_label": list(found.without_label),
+                "labels_not_in_model": list(found.other_labels),
+                "warnings": _findings(made.findings),
+            }
+        )
+        return status_of(made.findings)
+    rows = []
+    for name, size in found.skeleton.sizes.items():
+        sd = size.sd or (math.nan,) * 3
+        cells = [f"{f:.3f} ± {s:.3f}" for f, s in zip(size.factors, sd, strict=True)]
+        length = f"{1000 * lengths[name]:.0f} mm" if name in lengths else ""
+        rows.append((name, length, *cells))
+    show_table("", ["segment", "length", "factor x", "factor y", "factor z"], rows)
+    start, end = found.still
+    say(
+        f"{len(found.markers)} markers placed from {start:.2f}-{end:.2f} s of {found.static}, "
+        f"{1000 * rms:.1f} mm RMS from where the model expects them; up is {found.up} "
+        f"({found.up_how})"
+    )
+    if found.without_label:
+        say(f"markers of the model without a label here: {', '.join(found.without_label)}")
+    if found.other_labels:
+        say(f"labels here that the model does not know: {', '.join(found.other_labels)}")
+    show_findings(made.findings)
+    say(f"{found.skeleton.name} sized -> {made.output}")
+    return status_of(made.findings)
+
+
+def show_solved(run: Callable[[Watch], list[SolvedTrial]], *, as_json: bool) -> int:
+    """Solve with a progress bar, then one line a trial."""
+    with progress("fitting") as watch:
+        solved = run(watch)
+    if as_json:
+        show_json({"trials": [_trial(trial) for trial in solved]})
+    else:
+        for trial in solved:
+            say(trial_line(trial))
+            show_findings(trial.findings)
+        say(CAUTION)
+    return max(status_of(trial.findings) for trial in solved)
+
+
+def _trial(trial: SolvedTrial) -> dict[str, Any]:
+    whole = error_summary(trial.fit.motion.error, trial.fit.motion.used)
+    return {
+        "folder": str(trial.folder),
+        "frames": len(trial.fit.motion.time),
+        "rms_error": whole.rms,
+        "largest_error": whole.largest,
+        "converged": int(trial.fit.converged.sum()),
+        "seconds": trial.seconds,
+        "warnings": _findings(trial.findings),
+    }
+
+
+def trial_line(trial: SolvedTrial) -> str:
+    """A solved trial in one line that can be quoted."""
+    motion = trial.fit.motion
+    whole = error_summary(motion.error, motion.used)
+    return (
+        f"{motion.name}: {len(motion.time)} frames in {trial.seconds:.1f} s, "
+        f"RMS error {1000 * whole.rms:.1f} mm, largest {1000 * whole.largest:.0f} mm "
+        f"-> {trial.folder}"
+    )
+
+
+def show_pictures(pictures: Sequence[Path], *, as_json: bool) -> int:
+    """The pictures written."""
+    if as_json:
+        show_json({"pictures": [str(path) for path in pictures]})
+    else:
+        for path in pictures:
+            say(str(path))
+    return DONE

@@ -1,0 +1,193 @@
+"""The command line: parse, call, print. Exit status 0 done, 1 needs a look, 2 input wrong, 130 stopped.
+
+Everything heavy is imported inside the command that needs it, so that help appears at once.
+"""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable
+from functools import wraps
+from pathlib import Path
+from typing import Annotated, Any
+
+import typer
+
+from condyle.model.errors import CondyleError
+
+DONE, NEEDS_A_LOOK, WRONG_INPUT, OUR_FAULT, STOPPED = 0, 1, 2, 70, 130
+
+app = typer.Typer(
+    name="condyle",
+    help=(
+        "Size a skeleton to one person, pose it in every frame of a marker recording, and see how "
+        "well it fits. A measuring aid, not a diagnosis."
+    ),
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+Json = Annotated[bool, typer.Option("--json", help="Print the answer as JSON.")]
+Labels = Annotated[
+    Path | None,
+    typer.Option("--labels", help="MAP.yaml: one 'model marker: label in the recording' a line."),
+]
+Up = Annotated[
+    str | None,
+    typer.Option("--up", help="The laboratory axis that points up: X, Y, Z, -X, -Y or -Z."),
+]
+From = Annotated[float | None, typer.Option("--from", help="Seconds, on the recording's clock.")]
+To = Annotated[float | None, typer.Option("--to", help="Seconds, on the recording's clock.")]
+
+
+def guarded(command: Callable[..., int | None]) -> Callable[..., None]:
+    """Turn what a command returns or raises into an exit status and one honest line."""
+
+    @wraps(command)
+    def run(*args: Any, **kwargs: Any) -> None:
+        try:
+            status = command(*args, **kwargs) or DONE
+        except CondyleError as fault:
+            print(fault, file=sys.stderr)
+            status = WRONG_INPUT
+        except KeyboardInterrupt:
+            print("stopped; what was finished is kept.", file=sys.stderr)
+            status = STOPPED
+        except BrokenPipeError:
+            sys.stderr.close()
+            status = DONE
+        except typer.Exit:
+            raise
+        except Exception as fault:
+            from condyle.faults import log_fault
+
+            print(log_fault(fault), file=sys.stderr)
+            status = OUR_FAULT
+        raise typer.Exit(status)
+
+    return run
+
+
+@app.command(epilog="Example: condyle demo demo_out")
+@guarded
+def demo(
+    directory: Annotated[Path, typer.Argument(help="Where to write the study.")],
+    json: Json = False,
+) -> int:
+    """Write the demo study into DIRECTORY and run all of it: calibrate, solve, draw, compare."""
+    from condyle.demonstration import demo as run
+    from condyle.answers import show_demo
+
+    return show_demo(lambda watch: run(directory, watch=watch), as_json=json)
+
+
+@app.command(epilog="Example: condyle check lower_limbs")
+@guarded
+def check(
+    model: Annotated[str, typer.Argument(help="A shipped model's name, or a file.")],
+    json: Json = False,
+) -> int:
+    """Read a MODEL: its tree, coordinates, markers and what they cannot tell, or every mistake."""
+    from condyle.checking import check as run
+    from condyle.answers import show_model
+
+    return show_model(run(model), as_json=json)
+
+
+@app.command(epilog="Example: condyle recording walk.c3d")
+@guarded
+def recording(
+    file: Annotated[Path, typer.Argument(help="A C3D file.")],
+    json: Json = False,
+) -> int:
+    """Tell what a recording FILE holds: rate, units, up axis, markers, gaps, plates, events."""
+    from condyle.pipeline import describe_recording
+    from condyle.answers import show_recording
+
+    return show_recording(describe_recording(file), as_json=json)
+
+
+@app.command(epilog="Example: condyle calibrate lower_limbs static.c3d --mass 67.6 -o subject.yaml")
+@guarded
+def calibrate(
+    model: Annotated[str, typer.Argument(help="A shipped model's name, or a file.")],
+    static: Annotated[Path, typer.Argument(help="The static trial: the person stands still.")],
+    output: Annotated[Path, typer.Option("--output", "-o", help="The subject file to write.")],
+    mass: Annotated[float | None, typer.Option("--mass", help="Of the person, kg.")] = None,
+    stature: Annotated[float | None, typer.Option("--stature", help="Of the person, m.")] = None,
+    labels: Labels = None,
+    start: From = None,
+    end: To = None,
+    up: Up = None,
+    json: Json = False,
+) -> int:
+    """Size a MODEL and place its markers on the person of a STATIC trial; write SUBJECT.yaml."""
+    from condyle.pipeline import calibrate as run
+    from condyle.answers import show_subject
+
+    made = run(
+        model,
+        static,
+        output,
+        mass=mass,
+        stature=stature,
+        labels=labels,
+        up=up,
+        start=start,
+        end=end,
+    )
+    return show_subject(made, as_json=json)
+
+
+@app.command(epilog="Example: condyle solve subject.yaml walk.c3d -o results")
+@guarded
+def solve(
+    subject: Annotated[str, typer.Argument(help="A sized subject, or any model as it stands.")],
+    trials: Annotated[list[Path], typer.Argument(help="Movement trials.")],
+    output: Annotated[Path, typer.Option("--output", "-o", help="The folder for the results.")],
+    labels: Labels = None,
+    start: From = None,
+    end: To = None,
+    up: Up = None,
+    no_smooth: Annotated[
+        bool,
+        typer.Option("--no-smooth", help="Each frame by itself (so far the only way)."),
+    ] = False,
+    json: Json = False,
+) -> int:
+    """Fit the joint coordinates of every frame of the TRIALS; write one folder of results each."""
+    from condyle.pipeline import solve as run
+    from condyle.answers import show_solved
+
+    return show_solved(
+        lambda watch: run(
+            subject, trials, output, labels=labels, up=up, start=start, end=end, watch=watch
+        ),
+        as_json=json,
+    )
+
+
+@app.command(epilog="Example: condyle picture results/walk --frame 120")
+@guarded
+def picture(
+    directory: Annotated[Path, typer.Argument(help="What condyle solve wrote.")],
+    frame: Annotated[
+        int | None,
+        typer.Option("--frame", help="The recording's frame number; else the worst one."),
+    ] = None,
+    view: Annotated[str, typer.Option("--view", help="oblique, front or side.")] = "oblique",
+    json: Json = False,
+) -> int:
+    """Draw an overlay of one frame and a contact sheet of each solved trial in DIRECTORY."""
+    from condyle.pipeline import picture as run
+    from condyle.answers import show_pictures
+
+    return show_pictures(run(directory, frame=frame, view=view), as_json=json)
+
+
+def main() -> None:
+    """Run the command line."""
+    app()

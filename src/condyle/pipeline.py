@@ -1,0 +1,301 @@
+"""From files to files: read, calibrate or solve, save. What each command does, without a screen."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from time import perf_counter
+from typing import Any
+
+import numpy as np
+
+from condyle.model import load_skeleton, load_tree
+from condyle.model.errors import CondyleError
+from condyle.model.skeleton import Skeleton
+from condyle.model.whole_files import cannot_write
+from condyle.model.writing import write_subject
+from condyle.provenance import file_hash, model_hash, versions
+from condyle.recording import read_recording
+from condyle.recording.describing import RecordingReport, describe
+from condyle.recording.labels import read_label_map
+from condyle.solver.calibration import calibrate as calibrate_skeleton
+from condyle.solver.frame_problem import SkeletonFunctions
+from condyle.solver.quality import Finding, calibration_findings, trial_findings
+from condyle.solver.result_files import load_motion, save_trial
+from condyle.solver.results import Calibration, TrialFit
+from condyle.solver.trial_fit import fit_trial
+
+
+@dataclass(frozen=True, slots=True)
+class SizedSubject:
+    """What `calibrate` made: the estimate, where it was written, what is worth saying."""
+
+    calibration: Calibration
+    output: Path
+    findings: list[Finding]
+
+
+@dataclass(frozen=True, slots=True)
+class SolvedTrial:
+    """What `solve` made of one trial: the fit, its folder, what is worth saying."""
+
+    fit: TrialFit
+    folder: Path
+    findings: list[Finding]
+    seconds: float
+
+
+def describe_recording(file: str | Path) -> RecordingReport:
+    """What a recording holds."""
+    return describe(read_recording(Path(file)))
+
+
+def calibrate(
+    model: str | Path,
+    static: str | Path,
+    output: str | Path,
+    *,
+    mass: float | None = None,
+    stature: float | None = None,
+    labels: str | Path | None = None,
+    up: str | None = None,
+    start: float | None = None,
+    end: float | None = None,
+) -> SizedSubject:
+    """Size a model to the person of a static trial and write SUBJECT.yaml.
+
+    Parameters
+    ----------
+    model : a shipped model's name, or a file
+    static : the static trial
+    output : the file to write
+    mass, stature : kg, m
+    labels : a file ``{model marker: label in the recording}``
+    up : the laboratory axis that points up
+    start, end : s of the still part
+
+    Raises
+    ------
+    CondyleError
+        If anything in the input is wrong; then nothing is written.
+    """
+    output = Path(output)
+    _check_folder(output.parent)
+    skeleton = load_skeleton(model)
+    recording = read_recording(Path(static))
+    found = calibrate_skeleton(
+        skeleton,
+        recording,
+        stature=stature,
+        mass=mass,
+        labels=_label_map(labels, skeleton),
+        up=up,
+        start=start,
+        end=end,
+    )
+    tree = load_tree(model)
+    sized = found.skeleton
+    write_subject(
+        output,
+        tree,
+        sizes=sized.sizes,
+        placed={m.name: (m.placed, m.placed_sd) for m in found.markers},
+        subject=sized.subject,
+        labels=sized.labels,
+        up=sized.up,
+        calibration={
+            "model": skeleton.name,
+            "model_sha256": model_hash(str(model), tree),
+            "static": Path(static).name,
+            "static_sha256": file_hash(Path(static)),
+            "still": [round(float(t), 6) for t in found.still],
+            "up": found.up_how,
+            "condyle": versions()["condyle"],
+        },
+    )
+    return SizedSubject(found, output, calibration_findings(found))
+
+
+def solve(
+    subject: str | Path,
+    trials: Sequence[str | Path],
+    output: str | Path,
+    *,
+    smooth: bool = False,
+    labels: str | Path | None = None,
+    up: str | None = None,
+    start: float | None = None,
+    end: float | None = None,
+    watch: Callable[[str, float], None] | None = None,
+) -> list[SolvedTrial]:
+    """Fit every frame of some trials and write a folder of results for each.
+
+    Parameters
+    ----------
+    subject : a sized model's file, or any model as it stands
+    trials : recordings
+    output : the folder that gets one folder a trial
+    smooth : bool
+        Whether to estimate the trial as a whole; not available yet.
+    watch : callable, optional
+        Told the trial's name and the share of its work done.
+
+    Raises
+    ------
+    CondyleError
+        If anything in the input is wrong. Every trial is read before the first is fitted.
+    """
+    if smooth:
+        raise CondyleError(
+            "a smoothed solution is not available in this version.\n  Leave smoothing out."
+        )
+    skeleton = load_skeleton(subject)
+    label_map = _label_map(labels, skeleton)
+    paths = [Path(trial) for trial in trials]
+    _check_stems(paths)
+    _check_folder(Path(output).parent)
+    recordings = [read_recording(path) for path in paths]
+    functions = SkeletonFunctions(skeleton)
+    solved = []
+    for path, recording in zip(paths, recordings, strict=True):
+        began = perf_counter()
+        fit = fit_trial(
+            skeleton,
+            recording,
+            up=up,
+            labels=label_map,
+            start=start,
+            end=end,
+            functions=functions,
+            watch=None if watch is None else _watching(watch, path.stem),
+        )
+        findings = [*trial_findings(fit), *_also_calibrated(skeleton, path)]
+        folder = Path(output) / path.stem
+        seconds = perf_counter() - began
+        origin = _origin(subject, skeleton, path, seconds)
+        save_trial(fit, skeleton, folder, findings=findings, origin=origin)
+        solved.append(SolvedTrial(fit, folder, findings, seconds))
+    return solved
+
+
+def picture(folder: str | Path, *, frame: int | None = None, view: str = "oblique") -> list[Path]:
+    """Draw an overlay of one frame and a contact sheet for every solved trial in a folder.
+
+    Parameters
+    ----------
+    folder : what `solve` wrote, for one trial or for several
+    frame : the recording's own frame number; by default the frame that fits worst
+    view : from where the overlay looks
+
+    Returns
+    -------
+    The pictures written, ``overlay.png`` and ``contact_sheet.png`` in each trial's folder.
+    """
+    # Heavy, and refused without a GL library: only where pictures are made.
+    from condyle.viz.contact_sheet import draw_contact_sheet
+    from condyle.viz.frame_figures import worst_row
+    from condyle.viz.overlays import draw_overlay, save_picture
+
+    written = []
+    for trial in trial_folders(Path(folder)):
+        motion = load_motion(trial)
+        if frame is None:
+            row = worst_row(motion)
+        else:
+            rows = np.flatnonzero(motion.frame == frame)
+            if not len(rows):
+                raise CondyleError(
+                    f"{trial}: there is no frame {frame}.\n"
+                    f"  Frames run from {motion.frame[0]} to {motion.frame[-1]}."
+                )
+            row = int(rows[0])
+        for name, image in (
+            ("overlay.png", draw_overlay(motion, row, view=view)),
+            ("contact_sheet.png", draw_contact_sheet(motion)),
+        ):
+            save_picture(image, trial / name)
+            written.append(trial / name)
+    return written
+
+
+def trial_folders(folder: Path) -> list[Path]:
+    """The solved trials in a folder: itself, or those it holds.
+
+    Raises
+    ------
+    CondyleError
+        If there is none.
+    """
+    if (folder / "fit.json").is_file():
+        return [folder]
+    found = sorted(path.parent for path in folder.glob("*/fit.json"))
+    if not found:
+        raise CondyleError(
+            f"{folder}: no solved trial is there.\n"
+            "  Name a folder that condyle solve wrote, one trial's or the one that holds several."
+        )
+    return found
+
+
+def _watching(watch: Callable[[str, float], None], name: str) -> Callable[[float], None]:
+    return lambda share: watch(name, share)
+
+
+def _label_map(labels: str | Path | None, skeleton: Skeleton) -> Mapping[str, str] | None:
+    """The user's map, whose markers must be the model's."""
+    if labels is None:
+        return None
+    found = read_label_map(Path(labels))
+    unknown = sorted(set(found) - set(skeleton.marker_names))
+    if unknown:
+        raise CondyleError(
+            f"{labels}: {skeleton.name} has no marker called {', '.join(unknown)}.\n"
+            f"  Its markers: {', '.join(sorted(skeleton.marker_names))}."
+        )
+    return found
+
+
+def _check_stems(paths: Sequence[Path]) -> None:
+    stems = [path.stem for path in paths]
+    twice = sorted({stem for stem in stems if stems.count(stem) > 1})
+    if twice:
+        raise CondyleError(
+            f"two trials are called {', '.join(twice)}: their results would share a folder.\n"
+            "  Solve them into different folders, or rename one."
+        )
+
+
+def _check_folder(folder: Path) -> None:
+    """Refuse early what could not be written late."""
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as fault:
+        raise cannot_write(folder, fault) from fault
+
+
+def _also_calibrated(skeleton: Skeleton, trial: Path) -> list[Finding]:
+    if skeleton.calibration.get("static_sha256") != file_hash(trial):
+        return []
+    return [
+        Finding(
+            "this trial also served to calibrate: its errors say nothing about the fit of others",
+            "judge the skeleton by a trial it has not seen",
+        )
+    ]
+
+
+def _origin(subject: str | Path, skeleton: Skeleton, trial: Path, seconds: float) -> dict[str, Any]:
+    path = Path(subject)
+    return {
+        "subject": {
+            "name": skeleton.name,
+            "file": str(subject),
+            "sha256": file_hash(path) if path.is_file() else None,
+            "sized": bool(skeleton.sizes),
+        },
+        "trial": {"file": str(trial), "sha256": file_hash(trial)},
+        "versions": versions(),
+        "smoothed": False,
+        "seconds": round(seconds, 3),
+    }
