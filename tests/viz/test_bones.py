@@ -1,0 +1,128 @@
+"""Bones for any skeleton: always something to see, always where the joints are."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from itertools import combinations
+
+import numpy as np
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from hypothesis.extra.numpy import arrays
+
+from condyle.solver.results import FittedMotion
+from condyle.viz.bones import bone_shapes, build_bones
+from condyle.viz.shapes import skin
+from condyle.viz.skeleton_plan import SegmentPlan, plan_segments
+
+places = arrays(np.float64, 3, elements=st.floats(-0.5, 0.5).map(lambda value: round(value, 3)))
+names = st.sampled_from(
+    ["GT", "FE_lateral", "FE_medial", "LM", "MM", "TT", "FH", "CA", "MT1", "MT2", "MT5"]
+)
+points = st.dictionaries(names, places, max_size=7)
+
+
+@settings(max_examples=25, deadline=None)
+@given(
+    landmarks=points,
+    parent_points=points,
+    centres=st.dictionaries(st.sampled_from(["a", "b_right", "b_left"]), places),
+    proximal=places,
+)
+def test_any_segment_has_finite_parts_of_positive_size(
+    landmarks: dict[str, np.ndarray],
+    parent_points: dict[str, np.ndarray],
+    centres: dict[str, np.ndarray],
+    proximal: np.ndarray,
+) -> None:
+    plan = SegmentPlan("part", "whole", proximal, centres, landmarks, parent_points)
+    shapes, blend = bone_shapes(plan)
+    assert blend > 0.0
+    for shape in shapes:
+        assert shape.thinnest > 0.0
+        assert np.isfinite(shape.bounds()).all()
+
+
+PELVIS = {
+    f"{stem}_{side}": np.array([x, y, sign * z])
+    for stem, (x, y, z) in {"ASIS": (0.05, 0.09, 0.12), "PSIS": (-0.11, 0.08, 0.04)}.items()
+    for side, sign in (("right", 1.0), ("left", -1.0))
+}
+HIPS = {"thigh_right": np.array([0, 0, 0.085]), "thigh_left": np.array([0, 0, -0.085])}
+
+
+def test_a_pelvis_is_one_closed_ring_under_its_landmarks_and_around_the_hips() -> None:
+    plan = SegmentPlan("pelvis", None, np.zeros(3), HIPS, PELVIS, {})
+    shapes, blend = bone_shapes(plan)
+    surface = skin(shapes, blend=blend)
+    for point in (*PELVIS.values(), *HIPS.values()):
+        assert np.linalg.norm(surface.points - point, axis=1).min() < 0.03
+    edges = {tuple(sorted(edge)) for face in surface.faces for edge in combinations(face, 2)}
+    handles = 1 - (len(surface.points) - len(edges) + len(surface.faces)) / 2
+    assert handles >= 3  # the ring itself, and a hole below each hip
+
+
+def test_a_pelvis_is_as_symmetric_as_its_landmarks() -> None:
+    plan = SegmentPlan("pelvis", None, np.zeros(3), HIPS, PELVIS, {})
+    shapes, _ = bone_shapes(plan)
+    points = np.random.default_rng(2).uniform(-0.2, 0.2, (4000, 3))
+    here, mirrored = (
+        np.min([shape.distance(side) for shape in shapes], axis=0)
+        for side in (points, points * [1, 1, -1])
+    )
+    np.testing.assert_allclose(here, mirrored, atol=1e-12)
+
+
+FOOT = {
+    "CA_right": np.array([-0.06, -0.045, 0.0]),
+    "MT1_right": np.array([0.12, -0.05, -0.04]),
+    "MT5_right": np.array([0.09, -0.055, 0.05]),
+}
+
+
+def test_toes_go_on_ahead_of_the_metatarsals() -> None:
+    toes = SegmentPlan("toes_right", "foot_right", np.array([0.1, -0.05, 0.0]), {}, {}, FOOT)
+    surface = skin(bone_shapes(toes)[0], blend=0.006)
+    assert surface.points[:, 0].min() > 0.08
+    assert 0.14 < surface.points[:, 0].max() < 0.20
+
+
+@pytest.mark.parametrize("missing", ["ASIS_left", "PSIS_right"])
+def test_a_pelvis_without_all_its_landmarks_is_still_drawn(missing: str) -> None:
+    landmarks = {name: place for name, place in PELVIS.items() if name != missing}
+    shapes, _ = bone_shapes(SegmentPlan("pelvis", None, np.zeros(3), HIPS, landmarks, {}))
+    assert shapes
+
+
+def test_a_thigh_reaches_from_the_hip_to_the_knee(leg: FittedMotion) -> None:
+    thigh, shank = build_bones(leg)
+    assert thigh.points[:, 1].max() == pytest.approx(0.0, abs=0.03)
+    assert thigh.points[:, 1].min() == pytest.approx(-0.42, abs=0.03)
+    assert shank.points[:, 1].min() == pytest.approx(-0.40, abs=0.03)
+
+
+def test_a_femur_ends_under_the_skin_of_its_landmarks(leg: FittedMotion) -> None:
+    thigh = build_bones(leg)[0]
+    for mark in leg.landmarks["thigh_right"].values():
+        nearest = np.linalg.norm(thigh.points - mark, axis=1).min()
+        assert 0.0 < nearest < 0.03
+
+
+def test_a_segment_without_joints_or_landmarks_becomes_a_small_ball(
+    leg: FittedMotion, change: Callable[..., FittedMotion]
+) -> None:
+    bare = change(leg, joint_centres={}, landmarks={})
+    for bone in build_bones(bare):
+        assert 0.01 < np.ptp(bone.points, axis=0).max() < 0.06
+
+
+def test_the_proximal_joint_is_found_though_the_origin_is_elsewhere(
+    leg: FittedMotion, change: Callable[..., FittedMotion]
+) -> None:
+    poses = leg.laboratory_from_segment.copy()
+    shank_from_new = np.eye(4)
+    shank_from_new[:3, 3] = 0.01, -0.2, 0.03
+    poses[:, 1] = poses[:, 1] @ shank_from_new
+    plan = plan_segments(change(leg, laboratory_from_segment=poses))[1]
+    np.testing.assert_allclose(plan.proximal, [-0.01, 0.2, -0.03], atol=1e-12)
