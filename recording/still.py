@@ -21,16 +21,18 @@ from condyle.recording.recording import Recording
 FloatArray = NDArray[np.float64]
 
 SPEED_SPAN = 0.1
-"""s; noise of 1 mm becomes 14 mm/s over it, where from frame to frame at 200 Hz it is 280 mm/s."""
+"""s; noise of 1 mm per axis reads 24 mm/s over it (RMS), where from frame to frame at 200 Hz it
+reads 490 mm/s."""
 
 SHORTEST_STILL = 0.5
 """s; shorter moments occur within movement, at every turning point."""
 
-QUIET_SPEED = 0.03
-"""m/s; the sway of quiet standing with measurement noise stays below (from memory, loose bound)."""
+QUIET_SPEED = 0.05
+"""m/s; the sway of quiet standing, and noise of 1 mm per axis in the faster tenth of the markers, stay
+below (from memory, loose bound)."""
 
-MOVING_SPEED = 0.1
-"""m/s; above it a posture is not held: it changes by 5 cm within half a second."""
+MOVING_SPEED = 0.08
+"""m/s; above it a posture is not held: it changes by 4 cm within half a second."""
 
 FASTER_MARKERS = 90.0
 """Percentile of marker speeds that stands for a frame; a few ghosts or swaps do not count."""

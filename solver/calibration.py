@@ -293,13 +293,13 @@ def calibrate(
     """
     skeleton = unsized(skeleton)
     _check_person(skeleton, stature, mass)
-    still = still_part(static, start=start, end=end)
     matched = match_markers(skeleton, static, labels)
     functions = SkeletonFunctions(skeleton)
-    columns = still.frames
-    mean = _mean_positions(matched.positions[columns])[None]
+    # Before asking whether anything stands still: in a wrong unit nothing does.
+    check_scale(root_alignment(functions, matched.positions), static, skeleton)
+    still = still_part(static, start=start, end=end)
+    mean = _mean_positions(matched.positions[still.frames])[None]
     alignment = root_alignment(functions, mean)
-    check_scale(alignment, static, skeleton)
     upright = choose_up(functions, static, mean, asked=up)
     check_sides(functions, static, mean, alignment)
     problem = _problem(functions, mean[0], upright, stature)

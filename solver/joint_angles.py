@@ -2,7 +2,8 @@
 
 Closed forms of three intrinsic turns; the branch is the language's: with first and third axis alike
 the middle angle as reported lies in [0, 180] degrees, else in [-90, 90]. Where a sequence is
-singular only the sum (or difference) of first and third is determined, and it is reported too.
+singular only the sum or the difference of first and third is determined: the one that belongs to
+the singularity a series comes nearest to is reported too.
 """
 
 from __future__ import annotations
@@ -60,6 +61,14 @@ def report_angles(rotation: FloatArray, report: AngleReport) -> ReportedAngles:
     return ReportedAngles(_unwrapped(values), rates)
 
 
+def _nearer(sine: FloatArray) -> bool:
+    """Whether a series comes nearer to the singularity at +1 than to the one at -1.
+
+    One answer for the whole series, so that the sum does not jump where neither is near.
+    """
+    return bool(np.nanmax(sine, initial=-1.0) >= -np.nanmin(sine, initial=1.0))
+
+
 def _parity(i: int, j: int, k: int) -> int:
     return 1 if (j - i) % 3 == 1 and (k - j) % 3 == 1 else -1
 
@@ -73,7 +82,7 @@ def _cardan(
     middle = np.arcsin(np.clip(e * R[:, i, k], -1, 1))
     first = np.arctan2(-e * R[:, j, k], R[:, k, k])
     third = np.arctan2(-e * R[:, i, j], R[:, i, i])
-    up = e * middle >= 0
+    up = np.full(len(R), _nearer(e * np.sin(middle)))
     plus = np.arctan2(e * (R[:, k, j] + R[:, j, i]), R[:, j, j] - R[:, k, i])
     minus = np.arctan2(e * (R[:, k, j] - R[:, j, i]), R[:, j, j] + R[:, k, i])
     sense = np.where(up, 1.0, -1.0)
@@ -96,7 +105,7 @@ def _proper(
     middle = s * np.arctan2(sine, cosine)
     first = np.arctan2(s * R[:, j, i], -e * s * R[:, k, i])
     third = np.arctan2(s * R[:, i, j], e * s * R[:, i, k])
-    near = cosine >= 0
+    near = np.full(len(R), _nearer(cosine))
     plus = np.arctan2(e * (R[:, k, j] - R[:, j, k]), R[:, j, j] + R[:, k, k])
     minus = np.arctan2(e * (R[:, k, j] + R[:, j, k]), R[:, j, j] - R[:, k, k])
     sense = np.where(near, 1.0, -1.0)

@@ -119,7 +119,7 @@ def choose_up(
     if asked is not None:
         return Upright(up_axis(asked), "as asked")
     if skeleton.up is not None:
-        return Upright(up_axis(skeleton.up), f"as {skeleton.source or skeleton.name} keeps it")
+        return Upright(up_axis(skeleton.up), "as the sized skeleton keeps it")
     if recording.up is not None:
         return Upright(up_axis(recording.up), f"as {recording.name} declares")
     if not needs_up(skeleton):

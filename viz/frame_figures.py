@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from condyle.model.errors import CondyleError
+from condyle.recording.recording import is_seen
 from condyle.solver.results import FittedMotion
 
 CAUTION = "A measuring aid, not a diagnosis."
@@ -27,7 +28,8 @@ class FrameFigures:
     Attributes
     ----------
     used, missing, left_out : int
-        Markers in the fit; not measured; measured but kept out of the fit. Together: all.
+        Markers in the fit; not measured here though elsewhere in the trial; measured but kept out
+        of the fit.
     rms_mm : float
         NaN where no marker was used.
     worst : str, worst_mm : float
@@ -62,14 +64,14 @@ def counted(markers: int) -> str:
 def frame_figures(motion: FittedMotion, row: int) -> FrameFigures:
     """Count and measure one row."""
     error = motion.error[row]
-    seen = np.isfinite(motion.measured[row]).all(axis=1)
+    seen = is_seen(motion.measured[row])
     used = motion.used[row] & np.isfinite(error)
     worst = int(np.argmax(np.where(used, error, -1.0))) if used.any() else None
     return FrameFigures(
         time=float(motion.time[row]),
         frame=int(motion.frame[row]),
         used=int(used.sum()),
-        missing=int((~seen).sum()),
+        missing=int((~seen & is_seen(motion.measured).any(axis=0)).sum()),
         left_out=int((seen & ~used).sum()),
         rms_mm=float(1000.0 * np.sqrt(np.mean(error[used] ** 2))) if used.any() else np.nan,
         worst="" if worst is None else motion.marker_names[worst],

@@ -30,14 +30,14 @@ def pelvis(plan: SegmentPlan) -> list[Shape]:
         if front is None or back is None or hip is None:
             return []
         sides.append((front, back, hip))
-    (front_r, back_r, hip_r), (front_l, back_l, hip_l) = sides
-    width = float(np.linalg.norm(hip_r - hip_l))
-    right = direction(hip_r - hip_l)
+    (front_r, back_r, right_hip), (front_l, back_l, left_hip) = sides
+    width = float(np.linalg.norm(right_hip - left_hip))
+    right = direction(right_hip - left_hip)
     back, front = 0.5 * (back_r + back_l), 0.5 * (front_r + front_l)
     forward = front - back
     forward = direction(forward - right * (forward @ right))
     up = np.cross(right, forward)
-    middle = 0.5 * (hip_r + hip_l)
+    middle = 0.5 * (right_hip + left_hip)
     scale = width / HIP_WIDTH
     shapes = sacrum(back + SKIN * forward, forward, up, scale)
     symphysis = middle + (0.052 * forward - 0.030 * up) * scale

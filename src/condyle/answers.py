@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Sequence
 from dataclasses import asdict
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from condyle.checking import CoordinateReport, ModelReport
 from condyle.model.growth import sized_lengths
@@ -15,6 +15,10 @@ from condyle.recording.describing import RecordingReport, report_lines
 from condyle.screen import progress, say, show_findings, show_json, show_table
 from condyle.solver.quality import Finding, error_summary
 from condyle.solver.result_files import CAUTION
+
+if TYPE_CHECKING:
+    from condyle.demo_data import AngleErrors
+    from condyle.demonstration import Demonstration
 
 DONE, NEEDS_A_LOOK = 0, 1
 
@@ -177,3 +181,54 @@ def show_pictures(pictures: Sequence[Path], *, as_json: bool) -> int:
         for path in pictures:
             say(str(path))
     return DONE
+
+
+def show_demo(run: Callable[[Watch], Demonstration], *, as_json: bool) -> int:
+    """Run the demo with a progress bar, then its errors against the truth."""
+    with progress("fitting") as watch:
+        made = run(watch)
+    if as_json:
+        show_json(
+            {
+                "subject": str(made.subject.output),
+                "trials": [_trial(trial) for trial in made.trials],
+                "lengths": [asdict(error) for error in made.lengths],
+                "angles": {
+                    name: [asdict(error) for error in errors]
+                    for name, errors in made.angles.items()
+                },
+                "pictures": [str(path) for path in made.pictures],
+            }
+        )
+        return DONE
+    say("An invented orchard picker, sized from a static trial and fitted in two movements.")
+    for trial in made.trials:
+        say(trial_line(trial))
+    rows = [
+        (e.segment, f"{e.found_mm:.0f} mm", f"{e.true_mm:.0f} mm", f"{e.error_mm:+.1f} mm")
+        for e in made.lengths
+    ]
+    show_table("lengths against the truth", ["segment", "sized", "true", "error"], rows)
+    for name, errors in made.angles.items():
+        show_table(
+            f"{name}: errors against the truth",
+            ["angle (both sides)", "RMS", "RMS about its mean", "inside ±1.96 sd"],
+            [_angle_row(error) for error in errors],
+        )
+    say(
+        "The sd of a frame does not know yet what calibration does not know about sizes and marker "
+        "places: constant offsets lie outside it."
+    )
+    for path in made.pictures:
+        say(str(path))
+    say(CAUTION)
+    return DONE
+
+
+def _angle_row(error: AngleErrors) -> tuple[str, str, str, str]:
+    return (
+        error.name,
+        f"{error.rms:.2f} {error.unit}",
+        f"{error.rms_about_bias:.2f} {error.unit}",
+        f"{100 * error.covered:.0f} %",
+    )

@@ -39,6 +39,10 @@ Up = Annotated[
     str | None,
     typer.Option("--up", help="The laboratory axis that points up: X, Y, Z, -X, -Y or -Z."),
 ]
+Units = Annotated[
+    str | None,
+    typer.Option("--units", help="The recordings' unit of length, mm or m; wins over the files'."),
+]
 From = Annotated[float | None, typer.Option("--from", help="Seconds, on the recording's clock.")]
 To = Annotated[float | None, typer.Option("--to", help="Seconds, on the recording's clock.")]
 
@@ -61,7 +65,7 @@ def guarded(command: Callable[..., int | None]) -> Callable[..., None]:
             status = DONE
         except typer.Exit:
             raise
-        except Exception as fault:
+        except Exception as fault:  # noqa: BLE001 - a defect of ours becomes one honest line
             from condyle.faults import log_fault
 
             print(log_fault(fault), file=sys.stderr)
@@ -78,8 +82,8 @@ def demo(
     json: Json = False,
 ) -> int:
     """Write the demo study into DIRECTORY and run all of it: calibrate, solve, draw, compare."""
-    from condyle.demonstration import demo as run
     from condyle.answers import show_demo
+    from condyle.demonstration import demo as run
 
     return show_demo(lambda watch: run(directory, watch=watch), as_json=json)
 
@@ -91,8 +95,8 @@ def check(
     json: Json = False,
 ) -> int:
     """Read a MODEL: its tree, coordinates, markers and what they cannot tell, or every mistake."""
-    from condyle.checking import check as run
     from condyle.answers import show_model
+    from condyle.checking import check as run
 
     return show_model(run(model), as_json=json)
 
@@ -100,14 +104,15 @@ def check(
 @app.command(epilog="Example: condyle recording walk.c3d")
 @guarded
 def recording(
-    file: Annotated[Path, typer.Argument(help="A C3D file.")],
+    file: Annotated[Path, typer.Argument(help="A C3D file, or a table in CSV or Parquet.")],
+    units: Units = None,
     json: Json = False,
 ) -> int:
     """Tell what a recording FILE holds: rate, units, up axis, markers, gaps, plates, events."""
-    from condyle.pipeline import describe_recording
     from condyle.answers import show_recording
+    from condyle.pipeline import describe_recording
 
-    return show_recording(describe_recording(file), as_json=json)
+    return show_recording(describe_recording(file, units=units), as_json=json)
 
 
 @app.command(epilog="Example: condyle calibrate lower_limbs static.c3d --mass 67.6 -o subject.yaml")
@@ -119,14 +124,15 @@ def calibrate(
     mass: Annotated[float | None, typer.Option("--mass", help="Of the person, kg.")] = None,
     stature: Annotated[float | None, typer.Option("--stature", help="Of the person, m.")] = None,
     labels: Labels = None,
+    units: Units = None,
     start: From = None,
     end: To = None,
     up: Up = None,
     json: Json = False,
 ) -> int:
     """Size a MODEL and place its markers on the person of a STATIC trial; write SUBJECT.yaml."""
-    from condyle.pipeline import calibrate as run
     from condyle.answers import show_subject
+    from condyle.pipeline import calibrate as run
 
     made = run(
         model,
@@ -135,6 +141,7 @@ def calibrate(
         mass=mass,
         stature=stature,
         labels=labels,
+        units=units,
         up=up,
         start=start,
         end=end,
@@ -149,6 +156,7 @@ def solve(
     trials: Annotated[list[Path], typer.Argument(help="Movement trials.")],
     output: Annotated[Path, typer.Option("--output", "-o", help="The folder for the results.")],
     labels: Labels = None,
+    units: Units = None,
     start: From = None,
     end: To = None,
     up: Up = None,
@@ -159,12 +167,20 @@ def solve(
     json: Json = False,
 ) -> int:
     """Fit the joint coordinates of every frame of the TRIALS; write one folder of results each."""
-    from condyle.pipeline import solve as run
     from condyle.answers import show_solved
+    from condyle.pipeline import solve as run
 
     return show_solved(
         lambda watch: run(
-            subject, trials, output, labels=labels, up=up, start=start, end=end, watch=watch
+            subject,
+            trials,
+            output,
+            labels=labels,
+            units=units,
+            up=up,
+            start=start,
+            end=end,
+            watch=watch,
         ),
         as_json=json,
     )
@@ -182,8 +198,8 @@ def picture(
     json: Json = False,
 ) -> int:
     """Draw an overlay of one frame and a contact sheet of each solved trial in DIRECTORY."""
-    from condyle.pipeline import picture as run
     from condyle.answers import show_pictures
+    from condyle.pipeline import picture as run
 
     return show_pictures(run(directory, frame=frame, view=view), as_json=json)
 

@@ -11,20 +11,23 @@ from typing import Any
 import numpy as np
 
 from condyle.model import load_skeleton, load_tree
-from condyle.model.errors import CondyleError
+from condyle.model.errors import CondyleError, FitError
 from condyle.model.skeleton import Skeleton
 from condyle.model.whole_files import cannot_write
 from condyle.model.writing import write_subject
 from condyle.provenance import file_hash, model_hash, versions
 from condyle.recording import read_recording
 from condyle.recording.describing import RecordingReport, describe
-from condyle.recording.labels import read_label_map
+from condyle.recording.labels import match_labels, read_label_map, write_label_map
+from condyle.recording.recording import Recording
 from condyle.solver.calibration import calibrate as calibrate_skeleton
+from condyle.solver.draft_map import draft_labels
 from condyle.solver.frame_problem import SkeletonFunctions
+from condyle.solver.matching import match_markers
 from condyle.solver.quality import Finding, calibration_findings, trial_findings
 from condyle.solver.result_files import load_motion, save_trial
 from condyle.solver.results import Calibration, TrialFit
-from condyle.solver.trial_fit import fit_trial
+from condyle.solver.trial_fit import clipped, fit_trial
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,9 +49,9 @@ class SolvedTrial:
     seconds: float
 
 
-def describe_recording(file: str | Path) -> RecordingReport:
-    """What a recording holds."""
-    return describe(read_recording(Path(file)))
+def describe_recording(file: str | Path, *, units: str | None = None) -> RecordingReport:
+    """What a recording holds, in the unit of length given or else the file's own."""
+    return describe(read_recording(Path(file), units=units))
 
 
 def calibrate(
@@ -59,6 +62,7 @@ def calibrate(
     mass: float | None = None,
     stature: float | None = None,
     labels: str | Path | None = None,
+    units: str | None = None,
     up: str | None = None,
     start: float | None = None,
     end: float | None = None,
@@ -72,6 +76,7 @@ def calibrate(
     output : the file to write
     mass, stature : kg, m
     labels : a file ``{model marker: label in the recording}``
+    units : the static's unit of length, ``mm`` or ``m``; wins over what the file declares
     up : the laboratory axis that points up
     start, end : s of the still part
 
@@ -83,13 +88,15 @@ def calibrate(
     output = Path(output)
     _check_folder(output.parent)
     skeleton = load_skeleton(model)
-    recording = read_recording(Path(static))
+    recording = read_recording(Path(static), units=units)
+    label_map = _label_map(labels, skeleton)
+    _refuse_few_labels(skeleton, recording, label_map, up, output)
     found = calibrate_skeleton(
         skeleton,
         recording,
         stature=stature,
         mass=mass,
-        labels=_label_map(labels, skeleton),
+        labels=label_map,
         up=up,
         start=start,
         end=end,
@@ -124,6 +131,7 @@ def solve(
     *,
     smooth: bool = False,
     labels: str | Path | None = None,
+    units: str | None = None,
     up: str | None = None,
     start: float | None = None,
     end: float | None = None,
@@ -135,6 +143,7 @@ def solve(
     ----------
     subject : a sized model's file, or any model as it stands
     trials : recordings
+    units : their unit of length, ``mm`` or ``m``; wins over what the files declare
     output : the folder that gets one folder a trial
     smooth : bool
         Whether to estimate the trial as a whole; not available yet.
@@ -144,7 +153,7 @@ def solve(
     Raises
     ------
     CondyleError
-        If anything in the input is wrong. Every trial is read before the first is fitted.
+        If anything in the input is wrong. Every trial is read and matched before the first is fitted.
     """
     if smooth:
         raise CondyleError(
@@ -155,7 +164,11 @@ def solve(
     paths = [Path(trial) for trial in trials]
     _check_stems(paths)
     _check_folder(Path(output).parent)
-    recordings = [read_recording(path) for path in paths]
+    recordings = [
+        clipped(read_recording(path, units=units), start=start, end=end) for path in paths
+    ]
+    for recording in recordings:
+        match_markers(skeleton, recording, label_map)
     functions = SkeletonFunctions(skeleton)
     solved = []
     for path, recording in zip(paths, recordings, strict=True):
@@ -165,8 +178,6 @@ def solve(
             recording,
             up=up,
             labels=label_map,
-            start=start,
-            end=end,
             functions=functions,
             watch=None if watch is None else _watching(watch, path.stem),
         )
@@ -254,6 +265,30 @@ def _label_map(labels: str | Path | None, skeleton: Skeleton) -> Mapping[str, st
             f"  Its markers: {', '.join(sorted(skeleton.marker_names))}."
         )
     return found
+
+
+def _refuse_few_labels(
+    skeleton: Skeleton,
+    static: Recording,
+    labels: Mapping[str, str] | None,
+    up: str | None,
+    output: Path,
+) -> None:
+    """Where fewer than half the markers have a label, write a draft map and say so."""
+    names = skeleton.marker_names
+    match = match_labels(names, static.labels, labels or {})
+    if 2 * len(match.missing) <= len(names):
+        return
+    known = {n: static.labels[c] for n, c in match.columns.items() if c is not None}
+    draft = output.with_name(f"{output.stem}_labels_draft.yaml")
+    guesses = draft_labels(skeleton, static, known, up)
+    write_label_map(draft, guesses)
+    raise FitError(
+        f"{static.source}: only {len(known)} of the {len(names)} markers of {skeleton.name} have a "
+        "label here; sizing needs at least half.\n"
+        f"  A draft map of {len(guesses)} labels, guessed from where the points are, is in {draft}: "
+        "correct it and give it with --labels."
+    )
 
 
 def _check_stems(paths: Sequence[Path]) -> None:
