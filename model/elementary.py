@@ -43,6 +43,14 @@ def rotation_of_turn(turn: Turn | None) -> NDArray[np.float64]:
     return np.asarray(ca.evalf(rotation_about(turn.axis, ca.SX(turn.angle))), dtype=np.float64)
 
 
+def rotation_of_vector(v: Expression) -> Expression:
+    """Rotation of a rotation vector (rad), 3x3; differentiable at zero."""
+    # 1e-24 rad^2 keeps the derivative finite at no turn and changes no digit of any other.
+    angle = ca.sqrt(ca.dot(v, v) + 1e-24)
+    half = angle / 2
+    return rotation_of_quaternion(ca.vertcat(ca.cos(half), v * (ca.sin(half) / angle)))
+
+
 def rotation_of_quaternion(q: Expression) -> Expression:
     """Rotation of a unit quaternion (scalar first), 3x3."""
     w, x, y, z = (q[i] for i in range(4))

@@ -15,7 +15,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.elementary import Expression, rotation_of_turn
-from condyle.model.skeleton import LABORATORY, Joint, Move, Moves, Segment, Skeleton, Turn, Vector
+from condyle.model.skeleton import (
+    LABORATORY,
+    Joint,
+    Move,
+    Moves,
+    OnEllipsoid,
+    OnPlane,
+    Segment,
+    Skeleton,
+    Turn,
+    Vector,
+)
 
 FloatArray = NDArray[np.float64]
 
@@ -25,12 +36,15 @@ class NumberLayout:
     """Where each number of a sized skeleton stands in the flat vector that kinematics takes.
 
     The order: joint places in the parent, the same in the child, gains of dependent translations,
-    marker places, the rotation laboratory-from-upright (row by row).
+    marker places, the rotation laboratory-from-upright (row by row), small turns of joint axes,
+    tie places.
     """
 
     joints: int
     translations: int
     markers: int
+    turns: int
+    tie_places: int
 
     @property
     def at(self) -> slice:
@@ -59,9 +73,20 @@ class NumberLayout:
         return slice(self.marker_at.stop, self.marker_at.stop + 9)
 
     @property
+    def axis_turns(self) -> slice:
+        """(3 turns) Rotation vectors of small turns of joint axes, in the parent, rad."""
+        start = self.laboratory_from_upright.stop
+        return slice(start, start + 3 * self.turns)
+
+    @property
+    def ties(self) -> slice:
+        """(3 tie places) For each tie its point, the other place, and an ellipsoid's radii, m."""
+        return slice(self.axis_turns.stop, self.axis_turns.stop + 3 * self.tie_places)
+
+    @property
     def size(self) -> int:
         """Length of the flat vector."""
-        return int(self.laboratory_from_upright.stop)
+        return int(self.ties.stop)
 
 
 def dependent_translations(skeleton: Skeleton) -> list[tuple[Joint, Move]]:
@@ -75,10 +100,36 @@ def dependent_translations(skeleton: Skeleton) -> list[tuple[Joint, Move]]:
     ]
 
 
+def turning_joints(skeleton: Skeleton) -> list[Joint]:
+    """The joints whose axes may turn a little, in the order of the turns."""
+    freed = {name for name, joint in skeleton.sizing.joints.items() if joint.axis_sd is not None}
+    return [j for j in skeleton.joints if j.axis_turn is not None or j.name in freed]
+
+
+def tie_places(skeleton: Skeleton) -> list[tuple[str, Vector]]:
+    """(segment, place of the reference person) of everything of a tie that grows, in order."""
+    places = []
+    for tie in skeleton.ties:
+        places.append((tie.segment, tie.point))
+        kind = tie.kind
+        if isinstance(kind, OnPlane):
+            places.append((kind.of, kind.through))
+        elif isinstance(kind, OnEllipsoid):
+            places += [(kind.of, kind.centre), (kind.of, kind.radii)]
+        else:
+            places.append((kind.segment, kind.point))
+    return places
+
+
 def number_layout(skeleton: Skeleton) -> NumberLayout:
     """Where the numbers of this skeleton stand."""
-    translations = len(dependent_translations(skeleton))
-    return NumberLayout(len(skeleton.joints), translations, len(skeleton.markers))
+    return NumberLayout(
+        joints=len(skeleton.joints),
+        translations=len(dependent_translations(skeleton)),
+        markers=len(skeleton.markers),
+        turns=len(turning_joints(skeleton)),
+        tie_places=len(tie_places(skeleton)),
+    )
 
 
 def grown_numbers_expression(
@@ -99,14 +150,19 @@ def grown_numbers_expression(
             return ca.SX.ones(3)
         return factors[row[segment] : row[segment] + 3]
 
-    at = [of(joint.parent) * ca.DM(joint.at) for joint in skeleton.joints]
+    at = [
+        ca.SX(ca.DM(joint.placed)) if joint.placed else of(joint.parent) * ca.DM(joint.at)
+        for joint in skeleton.joints
+    ]
     in_child = [of(joint.child) * ca.DM(joint.in_child) for joint in skeleton.joints]
     gains = []
     for joint, move in dependent_translations(skeleton):
         turn = joint.turned if isinstance(joint.turned, Turn) else None
         axis_in_parent = rotation_of_turn(turn) @ np.array(move.axis)
         gains.append(ca.norm_2(of(joint.parent) * ca.DM(axis_in_parent)))
-    return ca.densify(ca.vertcat(*at, *in_child, *gains, marker_at, upright))
+    turns = [ca.SX(ca.DM(j.axis_turn or (0.0, 0.0, 0.0))) for j in turning_joints(skeleton)]
+    ties = [of(segment) * ca.DM(place) for segment, place in tie_places(skeleton)]
+    return ca.densify(ca.vertcat(*at, *in_child, *gains, marker_at, upright, *turns, *ties))
 
 
 def grown_marker_at_expression(skeleton: Skeleton, factors: Expression) -> Expression:
@@ -167,7 +223,8 @@ def sized_joint_centres(skeleton: Skeleton) -> dict[str, dict[str, FloatArray]]:
     for joint in skeleton.joints:
         if joint.parent != LABORATORY:
             growth = factors[skeleton.segment_index(joint.parent)]
-            centres[joint.parent][joint.child] = growth * np.array(joint.at)
+            grown = growth * np.array(joint.at)
+            centres[joint.parent][joint.child] = np.array(joint.placed) if joint.placed else grown
     return centres
 
 

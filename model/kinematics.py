@@ -19,8 +19,9 @@ from condyle.model.elementary import (
     rotation_about,
     rotation_of_quaternion,
     rotation_of_turn,
+    rotation_of_vector,
 )
-from condyle.model.growth import NumberLayout, number_layout
+from condyle.model.growth import NumberLayout, number_layout, turning_joints
 from condyle.model.skeleton import (
     LABORATORY,
     AngleReport,
@@ -88,6 +89,29 @@ class Screw:
     angular: Expression
 
 
+@dataclass(frozen=True, slots=True)
+class Bend:
+    """How two freedoms of one joint together accelerate everything beyond it.
+
+    The second derivative of a point p of any segment beyond is ``constant + linear @ p``.
+    """
+
+    freedoms: tuple[int, int]
+    joint: int
+    constant: Expression
+    linear: Expression
+
+
+@dataclass(frozen=True, slots=True)
+class _ElementaryScrew:
+    """One move's screw per unit of its value, with the value's first and second derivatives."""
+
+    linear: Expression
+    angular: Expression
+    rates: dict[int, Expression]
+    curvatures: dict[tuple[int, int], Expression]
+
+
 class Kinematics:
     """The expressions of one skeleton.
 
@@ -99,6 +123,8 @@ class Kinematics:
     rotations, origins : SX 3x3 and 3 for each segment
         Laboratory-from-segment.
     screws : every way in which a freedom moves a subtree
+    bends : every way in which two freedoms of one joint accelerate its subtree
+        Freedoms of two joints need none: the upper one turns the lower one's velocity.
     """
 
     def __init__(self, skeleton: Skeleton) -> None:
@@ -111,7 +137,9 @@ class Kinematics:
         self.rotations: list[Expression] = []
         self.origins: list[Expression] = []
         self.screws: list[Screw] = []
+        self.bends: list[Bend] = []
         self._gain = 0
+        self._turning = [joint.name for joint in turning_joints(skeleton)]
         self._values = self._coordinate_values()
         for index, joint in enumerate(skeleton.joints):
             self._add_joint(index, joint)
@@ -162,14 +190,30 @@ class Kinematics:
             parent = self.skeleton.segment_index(joint.parent)
             rotation, origin = self.rotations[parent], self.origins[parent]
         origin = origin + rotation @ self.numbers[self.layout.at][3 * index : 3 * index + 3]
-        if joint.turned == "upright":
-            rotation = rotation @ self._laboratory_from_upright()
-        elif joint.turned is not None:
-            rotation = rotation @ ca.sparsify(ca.DM(rotation_of_turn(joint.turned)))
-        rotation, origin = self._through_motion(index, joint, rotation, origin)
+        rotation, origin = self._through_turned_motion(index, joint, rotation, origin)
         in_child = self.numbers[self.layout.in_child][3 * index : 3 * index + 3]
         self.rotations.append(rotation)
         self.origins.append(origin - rotation @ in_child)
+
+    def _through_turned_motion(
+        self, index: int, joint: Joint, rotation: Expression, origin: Expression
+    ) -> tuple[Expression, Expression]:
+        """The motion M in the joint's own frame: turned . M, or T . turned . M . (its turn back).
+
+        T, a small turn of the joint's axes in the parent, leaves the zero posture as it is.
+        """
+        turned = ca.SX.eye(3)
+        if joint.turned == "upright":
+            turned = self._laboratory_from_upright()
+        elif joint.turned is not None:
+            turned = ca.sparsify(ca.SX(ca.DM(rotation_of_turn(joint.turned))))
+        if joint.name not in self._turning:
+            return self._through_motion(index, joint, rotation @ turned, origin)
+        vector = self.numbers[self.layout.axis_turns]
+        first = 3 * self._turning.index(joint.name)
+        small = rotation_of_vector(vector[first : first + 3])
+        rotation, origin = self._through_motion(index, joint, rotation @ small @ turned, origin)
+        return rotation @ turned.T @ small.T @ turned, origin
 
     def _laboratory_from_upright(self) -> Expression:
         return ca.reshape(self.numbers[self.layout.laboratory_from_upright], 3, 3).T
@@ -192,39 +236,87 @@ class Kinematics:
                 rotation = rotation @ self._laboratory_from_upright()
         ball = self.freedoms.balls.index(joint.name)
         rotation = rotation @ rotation_of_quaternion(self.quaternions[4 * ball : 4 * ball + 4])
-        first = self.freedoms.ball_slice(ball).start
-        for axis in range(3):
-            angular = rotation[:, axis]
-            self.screws.append(Screw(first + axis, index, ca.cross(origin, angular), angular))
+        self._add_ball(index, self.freedoms.ball_slice(ball).start, rotation, origin)
         return rotation, origin
+
+    def _add_ball(self, index: int, first: int, rotation: Expression, origin: Expression) -> None:
+        """Three turns at once: R Exp(d), whose second derivative is symmetric in its turns."""
+        axes = [rotation[:, axis] for axis in range(3)]
+        crosses = [cross_matrix(axis) for axis in axes]
+        for i, angular in enumerate(axes):
+            self.screws.append(Screw(first + i, index, ca.cross(origin, angular), angular))
+            for j in range(i + 1):
+                linear = (crosses[i] @ crosses[j] + crosses[j] @ crosses[i]) / 2
+                pair = (first + i, first + j)
+                self.bends.append(Bend(pair, index, -linear @ origin, linear))
 
     def _through_moves(
         self, index: int, motion: Moves, rotation: Expression, origin: Expression
     ) -> tuple[Expression, Expression]:
-        linear: dict[int, Expression] = {}
-        angular: dict[int, Expression] = {}
+        parts: list[_ElementaryScrew] = []
         for move in motion.moves:
             value = self._move_value(move)
             direction = rotation @ ca.sparsify(ca.DM(move.axis))
             gain = self._next_gain(move)
-            rates = ca.jacobian(value, self.scalars)
-            for freedom in range(len(self.freedoms.scalars)):
-                if not rates.sparsity().has_nz(0, freedom):
-                    continue
-                turned = rates[freedom] * direction
-                zero = ca.SX.zeros(3)
-                if move.kind == "rotate":
-                    linear[freedom] = linear.get(freedom, zero) + ca.cross(origin, turned)
-                    angular[freedom] = angular.get(freedom, zero) + turned
-                else:
-                    linear[freedom] = linear.get(freedom, zero) + gain * turned
-                    angular.setdefault(freedom, zero)
+            rates, curvatures = self._value_derivatives(value)
             if move.kind == "rotate":
+                linear, angular = ca.cross(origin, direction), direction
                 rotation = rotation @ rotation_about(move.axis, value)
             else:
+                linear, angular = gain * direction, ca.SX.zeros(3)
                 origin = origin + direction * (gain * value)
-        self.screws.extend(Screw(k, index, linear[k], angular[k]) for k in linear)
+            parts.append(_ElementaryScrew(linear, angular, rates, curvatures))
+        self._add_moves(index, parts)
         return rotation, origin
+
+    def _value_derivatives(
+        self, value: Expression
+    ) -> tuple[dict[int, Expression], dict[tuple[int, int], Expression]]:
+        """First and second derivatives of a move's value for the scalar freedoms it has."""
+        gradient = ca.jacobian(value, self.scalars)
+        rates = {
+            k: gradient[k]
+            for k in range(len(self.freedoms.scalars))
+            if gradient.sparsity().has_nz(0, k)
+        }
+        curvatures = {}
+        for k, rate in rates.items():
+            second = ca.jacobian(rate, self.scalars)
+            for other in rates:
+                if other <= k and second.sparsity().has_nz(0, other):
+                    curvatures[k, other] = second[other]
+        return rates, curvatures
+
+    def _add_moves(self, index: int, parts: list[_ElementaryScrew]) -> None:
+        """Sum the moves of a joint into one screw a freedom and one bend a pair of freedoms."""
+        freedoms = sorted({k for part in parts for k in part.rates})
+        for k in freedoms:
+            own = [part for part in parts if k in part.rates]
+            linear = sum((part.rates[k] * part.linear for part in own), ca.SX.zeros(3))
+            angular = sum((part.rates[k] * part.angular for part in own), ca.SX.zeros(3))
+            self.screws.append(Screw(k, index, linear, angular))
+            for other in freedoms:
+                if other <= k:
+                    self.bends.append(self._bend(index, parts, (k, other)))
+
+    @staticmethod
+    def _bend(index: int, parts: list[_ElementaryScrew], pair: tuple[int, int]) -> Bend:
+        """An earlier move turns the velocity of a later one, and of itself."""
+        k, other = pair
+        constant, linear = ca.SX.zeros(3), ca.SX(3, 3)
+        for later, part in enumerate(parts):
+            for before in parts[: later + 1]:
+                share = _product(before.rates, part.rates, pair, twice=before is not part)
+                if share is None:
+                    continue
+                turning = cross_matrix(before.angular)
+                constant = constant + share * (turning @ part.linear)
+                linear = linear + share * (turning @ cross_matrix(part.angular))
+            if (k, other) in part.curvatures:
+                bend = part.curvatures[k, other]
+                constant = constant + bend * part.linear
+                linear = linear + bend * cross_matrix(part.angular)
+        return Bend(pair, index, constant, linear)
 
     def _move_value(self, move: Move) -> Expression:
         if move.coordinate is not None:
@@ -239,31 +331,49 @@ class Kinematics:
         return gain
 
     def perturbed_marker_positions(self) -> tuple[Expression, Expression]:
-        """Marker positions after a step, and the step's symbol: for derivatives by CasADi.
+        """Marker positions after a step, and the step's symbol: for derivatives by CasADi."""
+        return self.perturbed(self.marker_positions)
+
+    def perturbed(self, expression: Expression) -> tuple[Expression, Expression]:
+        """An expression of the freedoms after a step, and the step's symbol.
 
         The balls' small rotations enter to first order, which is exact for the first derivative
         at step zero.
         """
         step = ca.SX.sym("step", self.freedoms.size)
-        other = Kinematics(self.skeleton)
         quaternions = []
         for ball in range(len(self.freedoms.balls)):
             q = self.quaternions[4 * ball : 4 * ball + 4]
             quaternions.append(_quaternion_after(q, step[self.freedoms.ball_slice(ball)]))
-        positions = ca.substitute(
-            [other.marker_positions],
-            [other.scalars, other.quaternions, other.numbers],
+        after = ca.substitute(
+            [expression],
+            [self.scalars, self.quaternions],
             [
                 self.scalars + step[: len(self.freedoms.scalars)],
                 ca.vertcat(ca.SX(0, 1), *quaternions),
-                self.numbers,
             ],
         )[0]
-        return positions, step
+        return after, step
+
+
+def _product(
+    first: dict[int, Expression],
+    second: dict[int, Expression],
+    pair: tuple[int, int],
+    *,
+    twice: bool,
+) -> Expression | None:
+    """What a pair of moves contributes to a pair of freedoms; None where nothing."""
+    k, other = pair
+    share = None
+    for a, b in ((k, other), (other, k)) if twice else ((k, other),):
+        if a in first and b in second:
+            share = (0 if share is None else share) + first[a] * second[b]
+    return share
 
 
 def _quaternion_after(q: Expression, step: Expression) -> Expression:
-    """q times the quaternion of a small rotation vector, to first order in the step."""
+    """Q times the quaternion of a small rotation vector, to first order in the step."""
     scalar, vector = q[0], q[1:]
     half = step / 2
     return ca.vertcat(

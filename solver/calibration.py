@@ -31,6 +31,7 @@ from condyle.model.skeleton import Marker, Person, Size, Skeleton
 from condyle.recording.recording import Recording, is_seen
 from condyle.recording.still import StillPart, still_part
 from condyle.solver.cold_start import fit_cold
+from condyle.solver.cone_limits import add_limits
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.least_squares import Bounds, Solution, minimise
 from condyle.solver.matching import (
@@ -98,9 +99,29 @@ class SizingProblem:
         W = np.repeat(self.weights, 3)
         H, g = (J.T * W) @ J, J.T @ (W * residual)
         cost = 0.5 * float((W * residual**2).sum())
+        cost += self._tie_terms(posture, H, g)
         cost += self._size_terms(posture, H, g)
         cost += self._posture_terms(posture, H, g)
-        return H[None], g[None], np.array([cost])
+        whole = H[None], g[None], np.array([cost])
+        self._add_limits(posture, *whole)
+        return whole
+
+    def curvature(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """Not worked out: a static fits well, and Gauss-Newton suffices."""
+        return np.zeros((len(rows), self.freedoms, self.freedoms))
+
+    def _tie_terms(self, posture: Posture, H: FloatArray, g: FloatArray) -> float:
+        """Ties of the sized skeleton, to within their sd."""
+        residual, J = self.evaluator.ties(posture, self.upright)
+        H += J.T @ J
+        g -= J.T @ residual
+        return 0.5 * float(residual @ residual)
+
+    def _add_limits(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
+        columns = self.step_columns()
+        for ball in self.functions.limited_balls:
+            first = columns[self.functions.kinematics.freedoms.ball_slice(ball.ball)][0]
+            add_limits(ball, posture, slice(first, first + 3), H, g, cost)
 
     def _size_terms(self, posture: Posture, H: FloatArray, g: FloatArray) -> float:
         """Factors about the overall scale, and the scale about what is known of it."""
@@ -171,6 +192,7 @@ class SizingProblem:
         extra = np.full(self.evaluator.groups + 1, np.inf)
         pinned = ~self.pulled()
         moved = (self.functions.moves_marker & (self.weights > 0)).any(axis=1)
+        moved |= self.functions.ties.moved_by
         columns = self.step_columns()
         pinned[columns] &= ~moved
         return Bounds(np.r_[lower, -extra][None], np.r_[upper, extra][None], pinned[None])
@@ -201,6 +223,20 @@ class SizingFunctions:
             ca.jacobian(points, step[n:]),
         )
         inputs = [kinematics.scalars, kinematics.quaternions, sizes, upright, step]
+        ties = functions.ties
+        tie_rows = ca.substitute(ties.expression, kinematics.numbers, numbers) / ca.DM(ties.sd)
+        tied, tie_step = kinematics.perturbed(tie_rows)
+        tie_rates = ca.horzcat(
+            ca.jacobian(tied, tie_step[:n]),
+            ca.jacobian(tied, sizes),
+            ca.SX(tied.numel(), 1),
+            ca.jacobian(tied, tie_step[n:]),
+        )
+        self._ties = ca.Function(
+            "sized_ties",
+            [kinematics.scalars, kinematics.quaternions, sizes, upright, tie_step],
+            [ca.densify(tied), ca.densify(tie_rates)],
+        )
         self._points = ca.Function("sized_markers", inputs, [points, ca.densify(derivatives)])
         self._places = ca.Function(
             "places", [sizes], [nominal, ca.densify(ca.jacobian(nominal, sizes))]
@@ -218,6 +254,18 @@ class SizingFunctions:
             0,
         )
         return np.asarray(points).reshape(-1, 3), np.asarray(J)
+
+    def ties(self, posture: Posture, upright: Upright) -> tuple[FloatArray, FloatArray]:
+        """Tie residuals (rows,) over their sd, and (rows, freedoms) derivatives."""
+        n = len(self._functions.kinematics.freedoms.scalars)
+        rows, J = self._ties(
+            posture.scalars[0, :n],
+            posture.quaternions[0].ravel(),
+            posture.scalars[0, n : n + self.groups],
+            upright.laboratory_from_upright.ravel(),
+            0,
+        )
+        return np.asarray(rows).ravel(), np.asarray(J)
 
     def nominal_places(self, sizes: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Grown nominal places (markers, 3) and (markers, 3, groups) derivatives."""

@@ -29,6 +29,8 @@ STAGE_ROUNDS, STAGE_TOLERANCE, STAGE_DAMPING = 15, 1e-2, 1e-3
 BAD_FACTOR = 3.0
 """A frame fits badly when its cost per marker exceeds this many medians."""
 MOST_RESTARTS = 20
+TIE_SOFTNESS = (3e-3, 3e-4, 3e-5)
+"""m; a stiff tie is a narrow curved valley, so ties are tightened in steps, each from the last fit."""
 LEAST_SPREAD = 1e-3
 """Singular value ratio below which a segment's markers count as lying on one line."""
 
@@ -76,11 +78,29 @@ def fit_cold(
     def finishing(left: int) -> None:
         tell(0.2 + 0.7 * (1 - left / frames))
 
-    solution = minimise(problem, start, bounds, damping=1e-6, watch=finishing)
+    solution = tightened(problem, start, bounds, damping=1e-6, watch=finishing)
     solution = _from_neighbours(problem, bounds, solution)
     solution = _restarted(problem, bounds, solution, np.random.default_rng(seed))
     tell(1.0)
     return solution
+
+
+def tightened(
+    problem: FrameProblem,
+    start: Posture,
+    bounds: Bounds,
+    *,
+    damping: float,
+    watch: Callable[[int], None] | None = None,
+) -> Solution:
+    """Minimise with the ties tightened step by step down to their own sd."""
+    least = problem.functions.ties.sd.min(initial=np.inf)
+    for softness in TIE_SOFTNESS:
+        if softness > 3 * least:
+            softer = problem.with_tie_softness(softness)
+            start = minimise(softer, start, bounds, damping=damping, most_rounds=60).posture
+            damping = 1e-8
+    return minimise(problem, start, bounds, damping=damping, watch=watch)
 
 
 def laid_on_root_markers(problem: FrameProblem, posture: Posture) -> Posture:
@@ -163,6 +183,7 @@ def _staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
             depth = np.maximum(depth, marker_depths(problem, joint.child))
     for limit in range(1, int(depth.max(initial=0))):
         stage = problem.with_weights(problem.weights * (depth <= limit))
+        stage = stage.with_tie_softness(TIE_SOFTNESS[0])
         posture = minimise(
             stage,
             posture,
@@ -171,7 +192,7 @@ def _staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
             tolerance=STAGE_TOLERANCE,
             most_rounds=STAGE_ROUNDS,
         ).posture
-    return minimise(problem, posture, bounds, damping=STAGE_DAMPING)
+    return tightened(problem, posture, bounds, damping=STAGE_DAMPING)
 
 
 def _better(old: Solution, rows: IntArray, new: Solution) -> Solution:
@@ -198,7 +219,7 @@ def _from_neighbours(problem: FrameProblem, bounds: Bounds, solution: Solution) 
     nearest = good[np.abs(bad[:, None] - good[None, :]).argmin(axis=1)]
     part, limits = problem.take(bad), bounds.take(bad)
     start = _at_rest_where_pinned(part, limits, solution.posture.take(nearest))
-    return _better(solution, bad, minimise(part, start, limits, damping=STAGE_DAMPING))
+    return _better(solution, bad, tightened(part, start, limits, damping=STAGE_DAMPING))
 
 
 def _restarted(

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.solver.cold_start import fit_cold
+from condyle.solver.cone_limits import at_limit as ball_at_limit
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Bounds, Solution, minimise
 from condyle.solver.observability import covariance, undetermined
@@ -65,16 +66,19 @@ def fit_frames(
     bounds = problem.bounds()
     solution = fit_cold(problem, bounds, seed=seed, watch=watch)
     rows = np.arange(len(problem))
-    H, _, _ = problem(solution.posture, rows)
+    H = problem.information(solution.posture, rows)
     pins, involved = undetermined(H, ~bounds.pinned)
     if pins.any():
         solution = _settled(problem, solution, pins)
-        H, _, _ = problem(solution.posture, rows)
+        H = problem.information(solution.posture, rows)
     unseen = ~problem.seen()
     free = ~solution.bounds.pinned
     count = solution.posture.scalars.shape[1]
     at_limit = (solution.active != 0) & free
     at_limit[:, :count] &= bounds.lower < bounds.upper
+    for ball in problem.functions.limited_balls:
+        here = problem.functions.kinematics.freedoms.ball_slice(ball.ball)
+        at_limit[:, here] |= ball_at_limit(ball, solution.posture)[:, None]
     return FrameFits(
         solution,
         solution.optimality(problem),

@@ -1,7 +1,7 @@
 """What one frame's fit minimises: weighted marker residuals and weak pulls to rest.
 
-cost = sum w |y - p(q)|^2 / 2 + sum ((q - rest) / rest_sd)^2 / 2, with the pull of a spherical joint
-on the components of log R. Missing markers weigh nothing.
+cost = sum w |y - p(q)|^2 / 2 + sum (tie / sd)^2 / 2 + sum ((q - rest) / rest_sd)^2 / 2, with the pull of
+a spherical joint on the components of log R. Missing markers weigh nothing.
 """
 
 from __future__ import annotations
@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from condyle.model.kinematics import Kinematics
 from condyle.model.skeleton import LABORATORY, Coordinate, Skeleton, Spherical
+from condyle.solver.cone_limits import add_limits, limited_balls
 from condyle.solver.least_squares import Bounds
 from condyle.solver.normal_equations import NormalEquations
 from condyle.solver.over_frames import FrameFunction, Replay
@@ -23,6 +24,7 @@ from condyle.solver.posture import (
     rotations,
     upright_posture,
 )
+from condyle.solver.tie_equations import TieEquations
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -36,6 +38,8 @@ class SkeletonFunctions:
     ----------
     kinematics : Kinematics
     normal_equations : NormalEquations
+    ties : TieEquations
+    limited_balls : spherical joints with a cone or a twist range
     moves_marker : (freedoms, markers) bool
         Whether a freedom moves a marker at all.
     """
@@ -44,6 +48,8 @@ class SkeletonFunctions:
         self.skeleton = skeleton
         self.kinematics = Kinematics(skeleton)
         self.normal_equations = NormalEquations(self.kinematics)
+        self.ties = TieEquations(self.kinematics)
+        self.limited_balls = limited_balls(self.kinematics)
         inputs = [self.kinematics.scalars, self.kinematics.quaternions, self.kinematics.numbers]
         self._markers: FrameFunction = Replay(
             ca.Function("markers", inputs, [ca.densify(self.kinematics.marker_positions)])
@@ -103,12 +109,15 @@ class FrameProblem:
     weights : (frames, markers) 1/m^2, 0 where missing or not used
     numbers : (numbers,)
         Of the sized skeleton, laid out as kinematics takes them.
+    tie_softness : float
+        m; what is added to every tie's sd, in quadrature, while a fit is still far away.
     """
 
     functions: SkeletonFunctions
     measured: FloatArray
     weights: FloatArray
     numbers: FloatArray
+    tie_softness: float = 0.0
 
     def __len__(self) -> int:
         return len(self.measured)
@@ -117,6 +126,28 @@ class FrameProblem:
         self, posture: Posture, rows: IntArray
     ) -> tuple[FloatArray, FloatArray, FloatArray]:
         """H, g and cost of some frames at a posture; see `least_squares.Problem`."""
+        H, g, cost = self._soft(posture, rows)
+        for ball in self.functions.limited_balls:
+            here = self.functions.kinematics.freedoms.ball_slice(ball.ball)
+            add_limits(ball, posture, here, H, g, cost)
+        return H, g, cost
+
+    def curvature(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """What H lacks of the second derivative: that of the markers; ties and pulls bend little."""
+        return self.functions.normal_equations.curvature(
+            posture.scalars,
+            posture.quaternions,
+            self.measured[rows],
+            self.weights[rows],
+            self.numbers,
+        )
+
+    def information(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """(frames, freedoms, freedoms) J'WJ + prior, whatever limit is reached."""
+        return self._soft(posture, rows)[0]
+
+    def _soft(self, posture: Posture, rows: IntArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Everything but the limits."""
         H, g, cost = self.functions.normal_equations(
             posture.scalars,
             posture.quaternions,
@@ -124,6 +155,7 @@ class FrameProblem:
             self.weights[rows],
             self.numbers,
         )
+        self._add_ties(posture, H, g, cost)
         self._add_scalar_pulls(posture, H, g, cost)
         self._add_ball_pulls(posture, H, g, cost)
         return H, g, cost
@@ -131,6 +163,10 @@ class FrameProblem:
     def with_weights(self, weights: FloatArray) -> FrameProblem:
         """The same problem, markers weighing otherwise."""
         return replace(self, weights=weights)
+
+    def with_tie_softness(self, softness: float) -> FrameProblem:
+        """The same problem, its ties held less tightly."""
+        return replace(self, tie_softness=softness)
 
     def take(self, rows: IntArray) -> FrameProblem:
         """The problem of some frames."""
@@ -153,10 +189,10 @@ class FrameProblem:
         return Bounds(np.tile(lower, (frames, 1)), np.tile(upper, (frames, 1)), pinned)
 
     def seen(self) -> BoolArray:
-        """(frames, freedoms) Whether a weighing marker moves with a freedom, or a pull holds it."""
+        """(frames, freedoms) Whether a weighing marker or a tie moves with a freedom, or a pull holds it."""
         moves = self.functions.moves_marker
         seen = (self.weights > 0).astype(float) @ moves.T.astype(float) > 0
-        return np.asarray(seen | self.pulled()[None, :])
+        return np.asarray(seen | (self.pulled() | self.functions.ties.moved_by)[None, :])
 
     def pulled(self) -> BoolArray:
         """(freedoms,) Which freedoms have a `rest_sd`."""
@@ -179,6 +215,17 @@ class FrameProblem:
             sd = motion.rest_sd if isinstance(motion, Spherical) else None
             sds.append(np.inf if sd is None else sd)
         return sds
+
+    def _add_ties(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
+        ties = self.functions.ties
+        if not len(ties):
+            return
+        residual, J = ties.residuals(posture, self.numbers)
+        sd = np.hypot(ties.sd, self.tie_softness)
+        residual, J = residual / sd, J / sd[:, None]
+        H += np.swapaxes(J, 1, 2) @ J
+        g -= np.einsum("nri,nr->ni", J, residual)
+        cost += (residual**2).sum(axis=1) / 2
 
     def _add_scalar_pulls(
         self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray

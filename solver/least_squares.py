@@ -25,8 +25,13 @@ TOLERANCE = 1e-9
 MOST_ROUNDS = 200
 MOST_SET_CHANGES = 12
 """Active-set sweeps in one step; an unfinished one is clipped, and damping repairs it later."""
+NEWTON_AFTER = 5
+"""Rounds of Gauss-Newton, enough where residuals are small; what is left fits badly and gets the exact
+second derivative, without which convergence there is slow."""
 ROUNDING = 1e-13
 """Relative rounding of a cost; a smaller gain cannot be told from none, and must not refuse a step."""
+LEAST_CURVATURE = 1e-8
+"""Least eigenvalue of a second derivative, scaled by H's diagonal, that counts as positive."""
 LEAST_DAMPING, MOST_DAMPING = 1e-10, 1e12
 
 
@@ -37,6 +42,9 @@ class Problem(Protocol):
         self, posture: Posture, rows: IntArray
     ) -> tuple[FloatArray, FloatArray, FloatArray]:
         """H (n, k, k), g = -gradient (n, k) and cost (n,) of the frames `rows` at `posture`."""
+
+    def curvature(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """(n, k, k) What to subtract from H for the cost's exact second derivative; 0 if unknown."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,6 +121,25 @@ class Solution:
 
 def _diagonal(H: FloatArray) -> FloatArray:
     return np.asarray(np.einsum("nii->ni", H))
+
+
+def _second_order(
+    problem: Problem, posture: Posture, rows: IntArray, H: FloatArray, late: IntArray
+) -> FloatArray:
+    """H, in late rows made the exact second derivative wherever that is positive definite."""
+    if not len(late):
+        return H
+    exact = H[late] - problem.curvature(posture.take(late), rows[late])
+    scale = 1 / np.sqrt(np.maximum(_diagonal(H[late]), np.finfo(float).tiny))
+    moving = _diagonal(H[late]) > 0
+    scale = np.where(moving, scale, 0.0)
+    unit = exact * scale[:, :, None] * scale[:, None, :]
+    index = np.arange(H.shape[1])
+    unit[:, index, index] += ~moving
+    definite = np.linalg.eigvalsh(unit)[:, 0] > LEAST_CURVATURE
+    model = H.copy()
+    model[late[definite]] = exact[definite]
+    return model
 
 
 def solve_masked(H: FloatArray, rhs: FloatArray, free: BoolArray) -> FloatArray:
@@ -198,13 +225,14 @@ def minimise(
     for _ in range(most_rounds):
         if not len(rows):
             break
-        damped = H.copy()
+        model = _second_order(problem, here, rows, H, np.flatnonzero(rounds[rows] >= NEWTON_AFTER))
+        damped = model.copy()
         diagonal = _diagonal(H)
         floor = np.maximum(diagonal, 1e-12 * diagonal.max(axis=1, initial=1e-300)[:, None])
-        damped[:, index, index] = diagonal + (factor[:, None] + LEAST_DAMPING) * floor
+        damped[:, index, index] += (factor[:, None] + LEAST_DAMPING) * floor
         low, high = bounds.take(rows).steps(here)
         step, active = bounded_step(damped, g, low, high, active)
-        gain = np.einsum("ni,ni->n", step, g) - np.einsum("ni,nij,nj->n", step, H, step) / 2
+        gain = np.einsum("ni,ni->n", step, g) - np.einsum("ni,nij,nj->n", step, model, step) / 2
         there = bounds.take(rows).inside(here.after(step))
         new_H, new_g, new_cost = problem(there, rows)
         rounds[rows] += 1

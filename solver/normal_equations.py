@@ -32,6 +32,7 @@ class Moments:
     first : sum of w p
     second : sum of w p p', 3x3
     force, torque : sums of w r and p x (w r)
+    outer : sum of p (w r)', 3x3
     """
 
     mass: Expression
@@ -39,6 +40,7 @@ class Moments:
     second: Expression
     force: Expression
     torque: Expression
+    outer: Expression
 
     def __add__(self, other: Moments) -> Moments:
         return Moments(
@@ -47,10 +49,13 @@ class Moments:
             self.second + other.second,
             self.force + other.force,
             self.torque + other.torque,
+            self.outer + other.outer,
         )
 
 
-NO_MARKERS = Moments(ca.SX(0), ca.SX.zeros(3), ca.SX(3, 3), ca.SX.zeros(3), ca.SX.zeros(3))
+NO_MARKERS = Moments(
+    ca.SX(0), ca.SX.zeros(3), ca.SX(3, 3), ca.SX.zeros(3), ca.SX.zeros(3), ca.SX(3, 3)
+)
 
 
 def _subtree_moments(
@@ -60,7 +65,7 @@ def _subtree_moments(
     for i, marker in enumerate(skeleton.markers):
         p, w = points[3 * i : 3 * i + 3], weights[i]
         force = w * residuals[3 * i : 3 * i + 3]
-        own = Moments(w, w * p, w * (p @ p.T), force, ca.cross(p, force))
+        own = Moments(w, w * p, w * (p @ p.T), force, ca.cross(p, force), p @ force.T)
         segment = skeleton.segment_index(marker.segment)
         moments[segment] = moments[segment] + own
     for i, joint in reversed(list(enumerate(skeleton.joints))):
@@ -95,7 +100,8 @@ class NormalEquations:
         weights = ca.SX.sym("weights", len(skeleton.markers))
         points = kinematics.marker_positions
         residuals = measured - points
-        entries, gradient = self._project(_subtree_moments(skeleton, points, residuals, weights))
+        moments = _subtree_moments(skeleton, points, residuals, weights)
+        entries, gradient = self._project(moments)
         cost = ca.dot(ca.vec(ca.repmat(weights.T, 3, 1)), residuals**2) / 2
         self.pairs = np.array(sorted(entries), dtype=np.int64).reshape(-1, 2)
         values = ca.vertcat(ca.SX(0, 1), *[entries[row, column] for row, column in self.pairs])
@@ -108,6 +114,17 @@ class NormalEquations:
             {"cse": True},
         )
         self._evaluate: FrameFunction = Replay(self.function)
+        bent = self._curvature(moments)
+        self.bent_pairs = np.array(sorted(bent), dtype=np.int64).reshape(-1, 2)
+        bent_values = ca.vertcat(ca.SX(0, 1), *[bent[k, j] for k, j in self.bent_pairs])
+        self._evaluate_curvature: FrameFunction = Replay(
+            ca.Function(
+                "curvature",
+                [kinematics.scalars, kinematics.quaternions, measured, weights, kinematics.numbers],
+                [ca.densify(bent_values)],
+                {"cse": True},
+            )
+        )
 
     def _project(
         self, moments: list[Moments]
@@ -134,6 +151,33 @@ class NormalEquations:
                 )
                 entries[key] = entries.get(key, ca.SX(0)) + both * value
         return entries, gradient
+
+    def _curvature(self, moments: list[Moments]) -> dict[tuple[int, int], Expression]:
+        """Entries of sum w r' d2p (row >= column): what H lacks of the cost's second derivative.
+
+        A freedom above turns the velocity that one below gives: a x (v + b x p), for every p beyond;
+        within one joint the bends say the rest.
+        """
+        ancestors, screws = self._ancestors(), self.kinematics.screws
+        entries: dict[tuple[int, int], Expression] = {}
+
+        def add(k: int, j: int, value: Expression) -> None:
+            key = (max(k, j), min(k, j))
+            entries[key] = entries.get(key, ca.SX(0)) + value
+
+        for screw in screws:
+            load = moments[screw.joint]
+            pull = ca.cross(screw.linear, load.force)
+            pull += load.outer @ screw.angular - ca.trace(load.outer) * screw.angular
+            for other in screws:
+                if other.joint in ancestors[screw.joint]:
+                    both = 2 if other.freedom == screw.freedom else 1
+                    add(screw.freedom, other.freedom, both * ca.dot(other.angular, pull))
+        for bend in self.kinematics.bends:
+            load = moments[bend.joint]
+            value = ca.dot(bend.constant, load.force) + ca.trace(bend.linear @ load.outer)
+            add(*bend.freedoms, value)
+        return entries
 
     def _ancestors(self) -> list[set[int]]:
         """For each joint, the joints between its parent segment and the laboratory."""
@@ -177,9 +221,31 @@ class NormalEquations:
             weights,
             numbers,
         )
+        return self._symmetric(values, self.pairs), gradient, cost[:, 0]
+
+    def curvature(
+        self,
+        scalars: FloatArray,
+        quaternions: FloatArray,
+        measured: FloatArray,
+        weights: FloatArray,
+        numbers: FloatArray,
+    ) -> FloatArray:
+        """(frames, n, n) sum of w r' d2p: H minus this is the cost's exact second derivative."""
+        frames = len(scalars)
+        (values,) = self._evaluate_curvature(
+            scalars,
+            quaternions.reshape(frames, -1),
+            measured.reshape(frames, -1),
+            weights,
+            numbers,
+        )
+        return self._symmetric(values, self.bent_pairs)
+
+    def _symmetric(self, values: FloatArray, pairs: NDArray[np.int64]) -> FloatArray:
         size = self.kinematics.freedoms.size
-        H = np.zeros((frames, size, size))
-        rows, columns = self.pairs.T
-        H[:, rows, columns] = values
-        H[:, columns, rows] = values
-        return H, gradient, cost[:, 0]
+        full = np.zeros((len(values), size, size))
+        rows, columns = pairs.T
+        full[:, rows, columns] = values
+        full[:, columns, rows] = values
+        return full

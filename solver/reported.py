@@ -138,13 +138,15 @@ def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: Angl
     rates = np.zeros((len(posture), 4, kinematics.freedoms.size))
     rates[:, :, kinematics.freedoms.ball_slice(ball)] = found.rates
     axes = "xyz"
+    motion = joint.motion
+    limited = isinstance(motion, Spherical) and (motion.cone, motion.twist) != (None, None)
     columns = [
         Column(
             name,
             "rad",
             f"{order} of three intrinsic turns of {joint.child}, about "
             f"{'-' if sign < 0 else ''}{axes[axis]}, at joint {joint.name}",
-            has_range=False,
+            has_range=limited,
         )
         for order, name, axis, sign in zip(
             ("first", "second", "third"), angles.names, angles.axes, angles.signs, strict=True

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
@@ -17,7 +18,8 @@ from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
 from condyle.model.errors import CondyleError
-from condyle.model.skeleton import Skeleton
+from condyle.model.meshes import GrownShape
+from condyle.model.skeleton import Shape, Skeleton, Turn, Vector
 from condyle.model.whole_files import cannot_write, whole_file
 from condyle.recording.recording import is_seen
 from condyle.solver.posture import quaternions_of, rotations
@@ -223,6 +225,10 @@ def skeleton_geometry(motion: FittedMotion, skeleton: Skeleton) -> dict[str, Any
             segment: {name: place.tolist() for name, place in landmarks.items()}
             for segment, landmarks in motion.landmarks.items()
         },
+        "shapes": {
+            segment: [asdict(grown) for grown in shapes]
+            for segment, shapes in motion.shapes.items()
+        },
     }
 
 
@@ -338,6 +344,7 @@ def _motion(
         used=known["used"].to_numpy(dtype=bool).reshape(frames, -1),
         joint_centres=_places(geometry["joint_centres"]),
         landmarks=_places(geometry["landmarks"]),
+        shapes=_shapes(geometry.get("shapes", {})),
     )
 
 
@@ -346,3 +353,26 @@ def _places(content: Mapping[str, Any]) -> dict[str, dict[str, FloatArray]]:
         segment: {name: np.array(place, dtype=np.float64) for name, place in places.items()}
         for segment, places in content.items()
     }
+
+
+def _shapes(content: Mapping[str, Any]) -> dict[str, tuple[GrownShape, ...]]:
+    return {
+        segment: tuple(GrownShape(_shape(one["shape"]), _three(one["factors"])) for one in several)
+        for segment, several in content.items()
+    }
+
+
+def _shape(content: Mapping[str, Any]) -> Shape:
+    turned = content["turned"]
+    return Shape(
+        mesh=str(content["mesh"]),
+        at=_three(content["at"]),
+        turned=None if turned is None else Turn(_three(turned["axis"]), float(turned["angle"])),
+        scale=float(content["scale"]),
+        reflected=bool(content["reflected"]),
+    )
+
+
+def _three(content: Any) -> Vector:
+    x, y, z = (float(value) for value in content)
+    return (x, y, z)

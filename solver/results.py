@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.model.meshes import GrownShape
 from condyle.model.skeleton import Skeleton, Vector
 from condyle.solver.posture import Posture
 
@@ -40,6 +41,8 @@ class FittedMotion:
         The joint centres of its children, in the sized segment.
     landmarks : segment -> name -> (3,) m
         In the sized segment.
+    shapes : segment -> GrownShapes
+        The meshes that the model draws on it, with its growth; only segments that have some.
     """
 
     name: str
@@ -55,6 +58,7 @@ class FittedMotion:
     joint_centres: Mapping[str, Mapping[str, FloatArray]]
     landmarks: Mapping[str, Mapping[str, FloatArray]]
     up_how: str = ""
+    shapes: Mapping[str, tuple[GrownShape, ...]] = field(default_factory=dict)
 
     @property
     def error(self) -> FloatArray:

@@ -18,6 +18,7 @@ from condyle.model.growth import (
     sized_marker_at,
     sized_numbers,
 )
+from condyle.model.meshes import grown_shapes
 from condyle.model.skeleton import Skeleton
 from condyle.recording.recording import Recording, is_seen
 from condyle.solver.frame_fit import FrameFits, fit_frames
@@ -158,6 +159,7 @@ def _assembled(
         used=problem.weights > 0,
         joint_centres=sized_joint_centres(skeleton),
         landmarks=sized_landmarks(skeleton),
+        shapes=grown_shapes(skeleton),
     )
     return TrialFit(
         motion=motion,
