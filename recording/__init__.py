@@ -8,6 +8,7 @@ from condyle.recording.point_names import is_unnamed
 from condyle.recording.reading import read_recording
 from condyle.recording.recording import AnalogSignals, Event, ForcePlate, Recording
 from condyle.recording.still import StillPart, still_part
+from condyle.recording.tables import read_table
 from condyle.recording.units import marker_spread, unlikely_spread
 
 __all__ = [
@@ -25,6 +26,7 @@ __all__ = [
     "read_c3d",
     "read_label_map",
     "read_recording",
+    "read_table",
     "report_lines",
     "still_part",
     "unlikely_spread",

@@ -23,6 +23,7 @@ from condyle.recording.point_names import listing, name_points, split_prefix
 from condyle.recording.recording import Recording
 from condyle.recording.units import (
     METRES_PER_UNIT,
+    check_unit,
     marker_spread,
     unit_from_spread,
     unlikely_spread,
@@ -37,8 +38,10 @@ UP = re.compile(r"([+-]?)([XYZ])")
 """An axis as POINT:Y_SCREEN gives it."""
 
 
-def read_c3d(path: Path) -> Recording:
+def read_c3d(path: Path, *, units: str | None = None) -> Recording:
     """Read a C3D file into metres and seconds, NaN where a point is missing.
+
+    `units` (``mm``, ``m``, ...) wins over what the file declares.
 
     A point is missing where its residual is negative, a number is not finite, or all three are
     exactly zero (common practice of several exporters).
@@ -48,6 +51,7 @@ def read_c3d(path: Path) -> Recording:
     RecordingError
         When the file is damaged or holds no points, frames or frame rate.
     """
+    check_unit(units)
     layout = check_layout(path)
     content = open_c3d(path)
     parameters = content["parameters"]
@@ -62,7 +66,7 @@ def read_c3d(path: Path) -> Recording:
     columns = kept[named.columns]
     remarks += named.remarks
     positions = positions[:, columns]
-    units = read_units(parameters["POINT"], marker_spread(positions), remarks)
+    units = read_units(parameters["POINT"], marker_spread(positions), remarks, asked=units)
     metres = METRES_PER_UNIT[units]
     rate = read_rate(parameters["POINT"], layout, path, remarks)
     analog = read_analog(content, layout, rate)
@@ -150,19 +154,32 @@ def position_columns(
     return np.array([i for i, kind in enumerate(kinds) if not kind], dtype=np.int64)
 
 
-def read_units(point: Mapping[str, Any], spread: float, remarks: list[str]) -> str:
-    """The unit of length: as declared, else from the spread of the points (in file units)."""
+def read_units(
+    point: Mapping[str, Any], spread: float, remarks: list[str], *, asked: str | None = None
+) -> str:
+    """The unit of length: as asked, else as declared, else from the spread (in file units)."""
     declared = next(iter(texts(point, "UNITS")), "")
-    unit = declared.lower()
+    unit = asked or declared.lower()
+    if asked is not None and declared.lower() != asked:
+        remarks.append(
+            f"The file declares {said_unit(declared)}: taken as {asked}, as asked for by --units."
+        )
     if unit not in METRES_PER_UNIT:
         unit = unit_from_spread(spread)
-        said = f"the unit '{declared}', which is not known" if declared else "no unit of length"
+        known = f"{said_unit(declared)}, which is not known" if declared else said_unit(declared)
         why = f"the markers spread over {spread:.4g} {unit}" if spread > 0 else "by default"
-        remarks.append(f"The file declares {said}: taken as {unit} ({why}).")
+        remarks.append(f"The file declares {known}: taken as {unit} ({why}).")
     doubt = unlikely_spread(spread * METRES_PER_UNIT[unit])
     if doubt:
-        remarks.append(f"Declared in {unit}: {doubt}." if declared else f"{doubt.capitalize()}.")
+        how = "Taken" if asked else "Declared"
+        told = asked or declared
+        remarks.append(f"{how} in {unit}: {doubt}." if told else f"{doubt.capitalize()}.")
     return unit
+
+
+def said_unit(declared: str) -> str:
+    """What a file says about its unit, in words."""
+    return f"the unit '{declared}'" if declared else "no unit of length"
 
 
 def read_rate(point: Mapping[str, Any], layout: Layout, path: Path, remarks: list[str]) -> float:

@@ -15,6 +15,7 @@ from ruamel.yaml.error import MarkedYAMLError, YAMLError
 from ruamel.yaml.nodes import MappingNode, Node, ScalarNode
 
 from condyle.model.errors import Mistake, ModelError
+from condyle.model.whole_files import whole_file
 from condyle.recording.point_names import split_prefix
 
 LARGEST_MAP = 1_000_000
@@ -168,3 +169,11 @@ def at_line(path: Path, line: int, problem: str, remedy: str) -> ModelError:
     return ModelError(
         [Mistake(str(path), line, f"{problem}.", f"{remedy[0].upper()}{remedy[1:]}.")]
     )
+
+
+def write_label_map(path: Path, labels: Mapping[str, str]) -> None:
+    """Write MAP.yaml, one marker a line, whole or not at all."""
+    yaml = YAML()
+    with whole_file(path) as beside, beside.open("w", encoding="utf-8") as file:
+        file.write("# model marker: label in the recording\n")
+        yaml.dump(dict(labels), file)

@@ -9,6 +9,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.model.errors import RecordingError
+
 METRES_PER_UNIT = {"mm": 1e-3, "cm": 1e-2, "dm": 1e-1, "m": 1.0}
 """Units of length that are read, in small letters; any case is taken."""
 
@@ -19,6 +21,13 @@ LEAST_SPREAD, MOST_SPREAD = 0.02, 20.0
 """m; markers on a person, or on a hand alone, spread further than the one and less than the
 other. Chosen about a factor 30 to either side of a person, so that a unit wrong by 1000 always
 falls outside and no sound recording does."""
+
+
+def check_unit(units: str | None) -> None:
+    """Refuse a unit of length that is asked for but not known."""
+    if units is not None and units not in METRES_PER_UNIT:
+        known = ", ".join(METRES_PER_UNIT)
+        raise RecordingError(f"no unit of length is called '{units}'; give one of {known}.")
 
 
 def marker_spread(positions: NDArray[np.float64]) -> float:

@@ -19,6 +19,7 @@ from condyle.solver.result_files import CAUTION
 if TYPE_CHECKING:
     from condyle.demo_data import AngleErrors
     from condyle.demonstration import Demonstration
+    from condyle.exporting import Exported
 
 DONE, NEEDS_A_LOOK = 0, 1
 
@@ -64,6 +65,8 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
             say(f"markers of {segment}: {', '.join(markers)}")
     if report.without_place:
         say(f"without a place until a static gives one: {', '.join(report.without_place)}")
+    for remark in report.mesh_remarks:
+        say(remark)
     if report.unseen:
         say(
             f"not determined by any marker: {', '.join(report.unseen)} (such a coordinate stays "
@@ -232,3 +235,16 @@ def _angle_row(error: AngleErrors) -> tuple[str, str, str, str]:
         f"{error.rms_about_bias:.2f} {error.unit}",
         f"{100 * error.covered:.0f} %",
     )
+
+
+def show_exported(made: Exported, *, as_json: bool) -> int:
+    """What was written for robotics tools, and what its reader must know."""
+    if as_json:
+        show_json({"files": [str(file) for file in made.files], "notes": list(made.notes)})
+        return DONE
+    for note in made.notes:
+        say(f"note: {note}")
+    say(made.summary)
+    for file in made.files[1:]:
+        say(str(file))
+    return DONE

@@ -14,6 +14,7 @@ import numpy as np
 
 from condyle.model import load_skeleton
 from condyle.model.growth import sized_marker_at
+from condyle.model.meshes import grown_shapes, mesh_remarks
 from condyle.model.skeleton import (
     Coordinate,
     Fixed,
@@ -61,6 +62,7 @@ class ModelReport:
     markers : segment -> marker names
     without_place : markers that only a static can place
     unseen : coordinates and orientations that the markers cannot tell
+    mesh_remarks : what is odd about the model's meshes
     """
 
     name: str
@@ -72,6 +74,7 @@ class ModelReport:
     markers: dict[str, tuple[str, ...]]
     without_place: tuple[str, ...]
     unseen: tuple[str, ...]
+    mesh_remarks: tuple[str, ...]
 
     def as_dict(self) -> dict[str, Any]:
         """Plain values, for JSON."""
@@ -105,6 +108,7 @@ def check(model: str | Path) -> ModelReport:
             if np.isnan(place).any()
         ),
         unseen=unseen,
+        mesh_remarks=tuple(mesh_remarks(grown_shapes(skeleton))),
     )
 
 

@@ -204,6 +204,33 @@ def picture(
     return show_pictures(run(directory, frame=frame, view=view), as_json=json)
 
 
+@app.command(epilog="Example: condyle export subject.yaml --to subject.urdf")
+@guarded
+def export(
+    source: Annotated[str, typer.Argument(help="A sized subject, or one solved trial's folder.")],
+    to: Annotated[Path | None, typer.Option("--to", help="FILE.urdf: the skeleton.")] = None,
+    motion: Annotated[
+        Path | None, typer.Option("--motion", help="FILE.csv or .parquet: the trial's motion.")
+    ] = None,
+    sampled: Annotated[
+        int | None,
+        typer.Option("--sampled", help="Samples of each function that a URDF cannot say."),
+    ] = None,
+    subject: Annotated[
+        str | None,
+        typer.Option("--subject", help="With --motion: the trial's subject, where it has moved."),
+    ] = None,
+    up: Up = None,
+    json: Json = False,
+) -> int:
+    """Write a subject as a URDF, or a solved trial as motion for it, for robotics tools."""
+    from condyle.answers import show_exported
+    from condyle.exporting import export as run
+
+    made = run(source, to=to, motion=motion, sampled=sampled, subject=subject, up=up)
+    return show_exported(made, as_json=json)
+
+
 def main() -> None:
     """Run the command line."""
     app()

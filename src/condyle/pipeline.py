@@ -184,7 +184,7 @@ def solve(
         findings = [*trial_findings(fit), *_also_calibrated(skeleton, path)]
         folder = Path(output) / path.stem
         seconds = perf_counter() - began
-        origin = _origin(subject, skeleton, path, seconds)
+        origin = _origin(subject, skeleton, path, recording, seconds)
         save_trial(fit, skeleton, folder, findings=findings, origin=origin)
         solved.append(SolvedTrial(fit, folder, findings, seconds))
     return solved
@@ -320,7 +320,9 @@ def _also_calibrated(skeleton: Skeleton, trial: Path) -> list[Finding]:
     ]
 
 
-def _origin(subject: str | Path, skeleton: Skeleton, trial: Path, seconds: float) -> dict[str, Any]:
+def _origin(
+    subject: str | Path, skeleton: Skeleton, trial: Path, recording: Recording, seconds: float
+) -> dict[str, Any]:
     path = Path(subject)
     return {
         "subject": {
@@ -329,7 +331,12 @@ def _origin(subject: str | Path, skeleton: Skeleton, trial: Path, seconds: float
             "sha256": file_hash(path) if path.is_file() else None,
             "sized": bool(skeleton.sizes),
         },
-        "trial": {"file": str(trial), "sha256": file_hash(trial)},
+        "trial": {
+            "file": str(trial),
+            "sha256": file_hash(trial),
+            "units": recording.units,
+            "remarks": list(recording.remarks),
+        },
         "versions": versions(),
         "smoothed": False,
         "seconds": round(seconds, 3),

@@ -52,8 +52,8 @@ def test_files_without_the_right_to_read_are_refused(tmp_path: Path) -> None:
 def test_other_content_is_refused(tmp_path: Path) -> None:
     assert "empty" in complaint_about(tmp_path, b"")
     assert "not a C3D" in complaint_about(tmp_path, b"time,x,y,z\n" * 100)
-    (tmp_path / "trial.csv").write_text("time,x,y,z\n")
-    assert "'.csv' files cannot be read" in complaint(tmp_path / "trial.csv")
+    (tmp_path / "trial.doc").write_text("time,x,y,z\n")
+    assert "'.doc' files cannot be read" in complaint(tmp_path / "trial.doc")
 
 
 def test_a_c3d_under_another_name_is_still_a_c3d(make_c3d: Build, tmp_path: Path) -> None:
