@@ -10,19 +10,13 @@ from collections.abc import Mapping
 from math import nan, pi, radians
 from typing import Literal
 
-from condyle.model.checking import mesh_path
 from condyle.model.coordinates import Declared, finished
+from condyle.model.freed_joints import freed_joints, in_radians
+from condyle.model.joint_language import Angles, JointEntry, MoveEntry, SphericalEntry, Turned
 from condyle.model.joint_tree import joints_in_order
-from condyle.model.language import (
-    Angles,
-    JointEntry,
-    MarkerEntry,
-    ModelEntry,
-    MoveEntry,
-    SegmentEntry,
-    ShapeEntry,
-    Turned,
-)
+from condyle.model.language import MarkerEntry, ModelEntry, ShapeEntry
+from condyle.model.places import resolved
+from condyle.model.segment_checks import mesh_path
 from condyle.model.sizing_groups import size_groups
 from condyle.model.skeleton import (
     AngleReport,
@@ -47,6 +41,7 @@ from condyle.model.skeleton import (
     Vector,
 )
 from condyle.model.tree import Node, node_at
+from condyle.model.tying import built_ties
 
 PLACED_WITHIN_AT_LANDMARK = 0.010
 """m per axis: how closely a marker is put on a landmark that can be felt."""
@@ -88,6 +83,7 @@ def build_skeleton(
         joints=joints,
         coordinates=_coordinates(joints, declared),
         markers=tuple(_marker(name, entry, model) for name, entry in model.markers.items()),
+        ties=built_ties(model),
         sizing=_sizing(model, [segment.name for segment in segments], declared),
         person=None if person is None else Person(person.stature or nan, person.mass or nan),
         subject=_subject(model),
@@ -108,15 +104,6 @@ def _subject(model: ModelEntry) -> Person | None:
     return Person(nan if stature is None else stature, nan if mass is None else mass)
 
 
-def _landmarks(name: str, model: ModelEntry) -> Mapping[str, Vector]:
-    segment = model.segments.get(name)
-    return {} if segment is None else segment.landmarks
-
-
-def _resolved(place: Vector | str, landmarks: Mapping[str, Vector]) -> Vector:
-    return landmarks[place] if isinstance(place, str) else place
-
-
 def _turn(turned: Turned | None) -> Turn | None:
     if turned is None or turned.axis is None or turned.angle is None:
         return None
@@ -135,33 +122,34 @@ def _segment(joint: Joint, joints: tuple[Joint, ...], model: ModelEntry, tree: N
         name=name,
         mass=mass,
         mass_share=entry.mass_share,
-        centre_of_mass=None if centre is None else _resolved(centre, entry.landmarks),
+        centre_of_mass=None if centre is None else resolved(centre, name, model),
         gyration=entry.gyration,
         landmarks=dict(entry.landmarks),
-        length=_length(entry, joint, joints),
+        length=_length(joint, joints, model),
         shapes=tuple(
-            _shape(shape, entry.landmarks, node_at(shapes, index))
+            _shape(shape, name, model, node_at(shapes, index))
             for index, shape in enumerate(entry.shapes)
         ),
     )
 
 
 def _length(
-    entry: SegmentEntry, joint: Joint, joints: tuple[Joint, ...]
+    joint: Joint, joints: tuple[Joint, ...], model: ModelEntry
 ) -> tuple[Vector, Vector] | None:
     """As written; else from the segment's joint centre to that of its first child."""
-    if entry.length is not None:
-        start, end = (_resolved(place, entry.landmarks) for place in entry.length)
+    written = model.segments[joint.child].length
+    if written is not None:
+        start, end = (resolved(place, joint.child, model) for place in written)
         return start, end
     first = next((one for one in joints if one.parent == joint.child), None)
     return None if first is None else (joint.in_child, first.at)
 
 
-def _shape(shape: ShapeEntry, landmarks: Mapping[str, Vector], node: Node) -> Shape:
+def _shape(shape: ShapeEntry, segment: str, model: ModelEntry, node: Node) -> Shape:
     mesh = mesh_path(node_at(node, "mesh"), shape.mesh or "").resolve()
     return Shape(
         mesh=str(mesh),
-        at=_resolved(shape.at, landmarks),
+        at=resolved(shape.at, segment, model),
         turned=_turn(shape.turned),
         scale=shape.scale,
         reflected=shape.reflected,
@@ -176,9 +164,13 @@ def _joint(name: str, model: ModelEntry, declared: Mapping[str, Declared]) -> Jo
         parent=parent,
         child=child,
         motion=_motion(entry, {name: one.unit for name, one in declared.items()}),
-        at=_resolved(entry.at, _landmarks(parent, model)),
-        in_child=_resolved(entry.in_child, _landmarks(child, model)),
+        at=resolved(entry.at, parent, model),
+        in_child=resolved(entry.in_child, child, model),
         turned="upright" if isinstance(entry.turned, str) else _turn(entry.turned),
+        placed=entry.placed,
+        placed_sd=entry.placed_sd,
+        axis_turn=in_radians(entry.axis_turn),
+        axis_turn_sd=in_radians(entry.axis_turn_sd),
     )
 
 
@@ -187,12 +179,20 @@ def _motion(entry: JointEntry, units: Units) -> Floating | Spherical | Moves | F
         position = entry.floating.position or ("", "", "")
         return Floating(position, _angle_report(entry.floating.angles))
     if entry.spherical is not None:
-        rest_sd = entry.spherical.rest_sd
-        report = _angle_report(entry.spherical.angles)
-        return Spherical(report, None if rest_sd is None else radians(rest_sd))
+        return _spherical(entry.spherical)
     if entry.moves is not None:
         return Moves(tuple(_move(move, units) for move in entry.moves))
     return Fixed()
+
+
+def _spherical(entry: SphericalEntry) -> Spherical:
+    twist = entry.twist
+    return Spherical(
+        angles=_angle_report(entry.angles),
+        rest_sd=None if entry.rest_sd is None else radians(entry.rest_sd),
+        cone=None if entry.cone is None else radians(entry.cone),
+        twist=None if twist is None else (radians(twist[0]), radians(twist[1])),
+    )
 
 
 def _angle_report(angles: Angles | None) -> AngleReport:
@@ -256,7 +256,7 @@ def _marker(name: str, entry: MarkerEntry, model: ModelEntry) -> Marker:
     return Marker(
         name=name,
         segment=segment,
-        at=None if entry.at is None else _resolved(entry.at, _landmarks(segment, model)),
+        at=None if entry.at is None else resolved(entry.at, segment, model),
         landmark=landmark,
         placed_within=within,
         sd=entry.sd,
@@ -272,4 +272,4 @@ def _sizing(model: ModelEntry, segments: list[str], declared: Mapping[str, Decla
         to_si = 1.0 if is_metres else _RADIANS_PER_DEGREE
         standing[name] = Expected(value * to_si, sd * to_si)
     groups = size_groups(segments, model.sizing.segments)
-    return Sizing(model.sizing.factor_sd, groups, standing)
+    return Sizing(model.sizing.factor_sd, groups, standing, freed_joints(model.sizing.joints))

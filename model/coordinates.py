@@ -12,7 +12,8 @@ from dataclasses import dataclass, field
 from math import inf, radians
 from typing import Literal
 
-from condyle.model.language import Angles, CoordinateEntry, ModelEntry, MoveEntry
+from condyle.model.joint_language import Angles, MoveEntry
+from condyle.model.language import CoordinateEntry, ModelEntry
 from condyle.model.skeleton import Coordinate
 from condyle.model.tree import Mistakes, Node, node_at
 

@@ -5,7 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from heapq import heapify, heappop, heappush
 
-from condyle.model.language import JointEntry, ModelEntry
+from condyle.model.joint_language import JointEntry
+from condyle.model.language import ModelEntry
 from condyle.model.skeleton import LABORATORY
 from condyle.model.tree import Mistakes, Node, node_at
 

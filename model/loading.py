@@ -6,17 +6,20 @@ from difflib import get_close_matches
 from pathlib import Path
 
 from condyle.model.building import build_skeleton
-from condyle.model.checking import check_model, mesh_path
+from condyle.model.checking import check_model
 from condyle.model.coordinates import Declared
 from condyle.model.errors import Mistake, ModelError, unknown_name
 from condyle.model.extending import find_model, merged_tree, refuse_idle_nulls, shipped_models
 from condyle.model.language import ModelEntry
 from condyle.model.mirroring import mirrored
+from condyle.model.segment_checks import mesh_path
 from condyle.model.shaping import read_shapes
 from condyle.model.skeleton import Skeleton
 from condyle.model.tree import Mistakes, Node, plain
 
-_SECTIONS = ("segments", "joints", "coordinates", "markers", "sizing", "sizes", "labels")
+_SECTIONS = (
+    "segments", "joints", "coordinates", "markers", "ties", "sizing", "sizes", "labels",
+)  # fmt: skip
 
 
 def load_skeleton(name_or_path: str | Path) -> Skeleton:

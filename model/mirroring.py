@@ -3,7 +3,8 @@
 The mirror plane is z = 0 of the upright body (ISB: Z to the right), the same in every segment
 because all axes are parallel in the reference posture. A place or a translation is a polar
 vector: z changes sign. A rotation axis is an axial vector: x and y change sign, so that a
-coordinate of the same value is the mirrored posture and keeps its clinical meaning.
+coordinate of the same value is the mirrored posture and keeps its clinical meaning. The twist of a
+spherical joint counts about -y in a twin: told about +y, its range is negated and turned round.
 
 Decided here:
 
@@ -27,8 +28,22 @@ _SIZING_SECTIONS = ("segments", "joints", "standing")
 
 _NAMES = frozenset(("from", "to", "segment", "coordinate", "follows", "with", "of"))
 _NAME_LISTS = frozenset(("names", "position"))
-_POLAR = frozenset(("at", "in_child", "centre_of_mass", "length", "translate", "placed"))
-_AXIAL = frozenset(("rotate", "axis", "sequence"))
+_POINTS = frozenset(("point", "meets", "from"))
+_POLAR = frozenset(
+    (
+        "at",
+        "in_child",
+        "centre_of_mass",
+        "length",
+        "translate",
+        "placed",
+        "through",
+        "centre",
+        "normal",
+    )
+)
+_AXIAL = frozenset(("rotate", "axis", "sequence", "axis_turn"))
+_NEVER_LANDMARKS = _AXIAL | {"translate", "normal"}
 
 Suffixes = Mapping[str, str]
 
@@ -134,6 +149,10 @@ def _twin(node: Node, key: str, suffixes: Suffixes) -> Node:
         return _twin_mapping(node, key, suffixes)
     if key in _AXIAL or key in _POLAR:
         return _twin_vector(node, key, suffixes)
+    if key in _POINTS and isinstance(value, list) and len(value) == 2:
+        return replace(node, value=_twin_point(value, suffixes), twin=True)
+    if key == "twist" and isinstance(value, list):
+        return replace(node, value=[_negated(child) for child in reversed(value)], twin=True)
     if isinstance(value, list):
         inner = "names" if key in _NAME_LISTS else "each"
         return replace(node, value=[_twin(child, inner, suffixes) for child in value], twin=True)
@@ -156,16 +175,18 @@ def _twin_mapping(node: Node, key: str, suffixes: Suffixes) -> Node:
     return replace(node, value=entries, twin=True)
 
 
+def _twin_point(point: list[Node], suffixes: Suffixes) -> list[Node]:
+    """The mirror image of a segment and a place on it, as ties name them."""
+    return [_twin(point[0], "segment", suffixes), _twin(point[1], "at", suffixes)]
+
+
 def _twin_vector(node: Node, key: str, suffixes: Suffixes) -> Node:
     """The mirror image of an axis, a place, the name of a landmark, or a list of such."""
     value = node.value
     if isinstance(value, str):
-        is_axis = key in _AXIAL or key == "translate"
-        return replace(
-            node,
-            value=_twin_axis(value, key) if is_axis else _exchanged(value, suffixes),
-            twin=True,
-        )
+        is_axis = key in _NEVER_LANDMARKS
+        other = _twin_axis(value, key) if is_axis else _exchanged(value, suffixes)
+        return replace(node, value=other, twin=True)
     if not isinstance(value, list):
         return replace(node, twin=True)
     if len(value) == 3 and all(_is_number(child) for child in value):

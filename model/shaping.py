@@ -14,16 +14,15 @@ from pydantic import ValidationError
 from pydantic_core import ErrorDetails
 
 from condyle.model.errors import unknown_name
-from condyle.model.language import ModelEntry, Vocabulary
+from condyle.model.language import ModelEntry
 from condyle.model.tree import Mistakes, Node, Step, plain
+from condyle.model.value_kinds import Vocabulary
 
 _LONGEST_SHOWN = 40
 """Characters of a wrong value that are worth repeating."""
 
 _PASSES = 4
 """Taking a wrong value out can uncover another, hidden by it; never more than a few deep."""
-
-_NOT_YET = "this version of Condyle does not take '{key}' yet."
 
 
 def read_shapes(tree: Node, mistakes: Mistakes) -> ModelEntry | None:
@@ -94,9 +93,6 @@ def _tell(tree: Node, error: ErrorDetails, mistakes: Mistakes) -> None:
         problem = f"'{key}' cannot be a name."
         said = "a name in one line, without blanks at its ends, of at most 200 letters"
         mistakes.add(node, problem, f"Write {said}.", key=True)
-        return
-    if kind == "not_yet":
-        mistakes.add(node, _NOT_YET.format(key=key), f"Write {said}.", key=True)
         return
     shown = _shown(node)
     if kind in ("no_direction", "reversed"):

@@ -10,13 +10,16 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from math import inf
-from typing import Literal
+from typing import Literal, TypeAlias
 
 Vector = tuple[float, float, float]
 """Three numbers in the frame that the name beside it says, in metres unless an axis."""
 
 LABORATORY = "laboratory"
 """The recording's own frame: the parent of every root joint, never a segment."""
+
+Regression: TypeAlias = Literal["harrington_2007", "bell_1990", "hara_2016"]
+"""A published regression for the hip's centre from the spines of the pelvis."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -141,11 +144,24 @@ class Floating:
 class Spherical:
     """Three rotational freedoms without a gimbal.
 
-    ``rest_sd`` (rad per component of log R from the zero posture) is None where there is no pull.
+    The limits split R = swing . turn(y, twist), the swing being the shortest turn from the joint's
+    Y to the child's. Twist is always counted about +y here: in a left twin, where the language
+    counts it about -y, the mirror has already written its range negated, (-upper, -lower).
+
+    Attributes
+    ----------
+    rest_sd : float or None
+        rad per component of log R from the zero posture; None where there is no pull.
+    cone : float or None
+        rad, above 0 and at most pi: the largest angle of the child's Y from the joint's Y.
+    twist : (lower, upper) or None
+        rad, within [-pi, pi] and around 0.
     """
 
     angles: AngleReport
     rest_sd: float | None = None
+    cone: float | None = None
+    twist: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -172,6 +188,11 @@ class Joint:
         The joint centre in the parent and in the child, m of the reference person.
     turned : Turn, "upright" or None
         "upright" (only from the laboratory): the moves start from the upright frame.
+    placed, placed_sd : Vector or None
+        m in the *sized* parent, as calibration found a freed joint; wins over `at`, does not grow.
+    axis_turn, axis_turn_sd : Vector or None
+        rad: the rotation vector, in the parent, of the small turn T that makes every move M of the
+        joint T M T^-1, as calibration found it; None where the joint's axes stand as written.
     """
 
     name: str
@@ -181,6 +202,10 @@ class Joint:
     at: Vector = (0.0, 0.0, 0.0)
     in_child: Vector = (0.0, 0.0, 0.0)
     turned: Turn | Literal["upright"] | None = None
+    placed: Vector | None = None
+    placed_sd: Vector | None = None
+    axis_turn: Vector | None = None
+    axis_turn_sd: Vector | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -244,6 +269,77 @@ class Marker:
 
 
 @dataclass(frozen=True, slots=True)
+class MeetsPoint:
+    """The tied point meets `point` of `segment`: three equations."""
+
+    segment: str
+    point: Vector
+
+
+@dataclass(frozen=True, slots=True)
+class OnPlane:
+    """The tied point stays on a plane of the segment `of`: one equation.
+
+    `through` grows with the segment; the unit `normal` keeps its direction, as joint axes do.
+    """
+
+    of: str
+    through: Vector
+    normal: Vector
+
+
+@dataclass(frozen=True, slots=True)
+class OnEllipsoid:
+    """The tied point glides on an ellipsoid of the segment `of`: one equation.
+
+    `centre` and `radii` (m, along the segment's x, y, z) grow with the segment, axis by axis.
+    """
+
+    of: str
+    centre: Vector
+    radii: Vector
+
+
+@dataclass(frozen=True, slots=True)
+class StaysAt:
+    """The tied point stays `distance` (m) from `point` of `segment`: one equation.
+
+    The two ends lie on two segments, so the distance is nobody's to grow: it stays as written.
+    """
+
+    segment: str
+    point: Vector
+    distance: float
+
+
+@dataclass(frozen=True, slots=True)
+class Tie:
+    """A loop or a contact: a point of one segment and what it keeps to on another.
+
+    Attributes
+    ----------
+    segment, point : str, Vector
+        m in the segment of the reference person; grows with it. The segment may be ``laboratory``
+        (the frame as recorded, which does not grow), here and in `kind`, but not in both.
+    kind : MeetsPoint, OnPlane, OnEllipsoid or StaysAt
+    sd : float
+        m: how closely each equation is met.
+    """
+
+    name: str
+    segment: str
+    point: Vector
+    kind: MeetsPoint | OnPlane | OnEllipsoid | StaysAt
+    sd: float = 0.002
+
+    @property
+    def other(self) -> str:
+        """The segment, or ``laboratory``, that the point is tied to."""
+        kind = self.kind
+        return kind.of if isinstance(kind, OnPlane | OnEllipsoid) else kind.segment
+
+
+@dataclass(frozen=True, slots=True)
 class SizeGroup:
     """One size factor: which axes of which segments it stretches.
 
@@ -267,6 +363,26 @@ class Expected:
 
 
 @dataclass(frozen=True, slots=True)
+class FreedJoint:
+    """A joint whose centre or axes calibration may move.
+
+    Attributes
+    ----------
+    place_sd : float or None
+        m per axis about the grown place, in the parent; None where the centre is not freed.
+    axis_sd : float or None
+        rad per axis of the small turn T (see :attr:`Joint.axis_turn`); None where not freed.
+    centre_from : str or None
+        The published regression that counts as evidence for the centre. The centre is that of the
+        right hip where the joint's `at` has z above 0, else of the left.
+    """
+
+    place_sd: float | None = None
+    axis_sd: float | None = None
+    centre_from: Regression | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Sizing:
     """What may differ between people, and by how much.
 
@@ -277,11 +393,14 @@ class Sizing:
     groups : SizeGroups
         Together they cover every axis of every segment exactly once.
     standing : coordinate or reported angle -> Expected
+    joints : joint -> FreedJoint
+        Only those that are freed.
     """
 
     factor_sd: float
     groups: tuple[SizeGroup, ...]
     standing: Mapping[str, Expected] = field(default_factory=dict)
+    joints: Mapping[str, FreedJoint] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -309,6 +428,7 @@ class Skeleton:
     segments : in the order of `joints`
     joints : parents before children; joint i carries segment i
     coordinates : every named one, in the order the joints declare them
+    ties : in the order of the file
     sizes : segment -> Size
         Empty for the reference person.
     person : Person or None
@@ -329,6 +449,7 @@ class Skeleton:
     coordinates: tuple[Coordinate, ...]
     markers: tuple[Marker, ...]
     sizing: Sizing
+    ties: tuple[Tie, ...] = ()
     about: str = ""
     sources: tuple[str, ...] = ()
     person: Person | None = None

@@ -1,15 +1,15 @@
 """A sized model back to YAML: the whole language, readable, nothing left to look up elsewhere.
 
 The numbers of the reference person stay as they were read; what calibration found stands beside
-them under keys of its own (`sizes`, `placed`, `subject`, `labels`, `up`, `calibration`), so a
-reader can see both. Meshes that live in another folder are copied beside the file.
+them under keys of its own (`sizes`, `placed`, `axis_turn`, `subject`, `labels`, `up`,
+`calibration`), so a reader can see both. Meshes that live in another folder are copied beside the file.
 """
 
 from __future__ import annotations
 
 import shutil
-from collections.abc import Mapping, Sequence
-from math import isfinite, isnan
+from collections.abc import Iterable, Mapping, Sequence
+from math import degrees, isfinite, isnan
 from numbers import Integral, Real
 from pathlib import Path
 from typing import Any
@@ -18,9 +18,9 @@ from ruamel.yaml import YAML
 from ruamel.yaml.comments import CommentedMap, CommentedSeq
 from ruamel.yaml.scalarstring import DoubleQuotedScalarString
 
-from condyle.model.language import LARGEST_NUMBER
 from condyle.model.reading import scalar_of
-from condyle.model.skeleton import Person, Size, Vector
+from condyle.model.skeleton import Joint, Person, Size, Vector
+from condyle.model.value_kinds import LARGEST_NUMBER
 from condyle.model.whole_files import cannot_write, whole_file
 
 DECIMALS = 6
@@ -50,6 +50,7 @@ def write_subject(
     labels: Mapping[str, str],
     up: str | None,
     calibration: Mapping[str, object],
+    joints: Iterable[Joint] = (),
 ) -> None:
     """Write a complete, sized model.
 
@@ -70,6 +71,8 @@ def write_subject(
         The laboratory axis that points up, such as ``+Y``.
     calibration : mapping
         Where the file comes from: plain values, kept as they are.
+    joints : Joints
+        Those that calibration freed: their `placed` and `axis_turn`, with the sds, are written.
 
     Raises
     ------
@@ -78,6 +81,8 @@ def write_subject(
     """
     tree: dict[str, Any] = {key: value for key, value in merged_tree.items() if key not in _NEW}
     tree["markers"] = _markers(_mapping(tree.get("markers")), placed)
+    found = {joint.name: joint for joint in joints}
+    tree["joints"] = _joints(_mapping(tree.get("joints")), found)
     tree["subject"] = _subject(subject)
     tree["up"] = up
     tree["sizes"] = {name: _size(size) for name, size in sizes.items()}
@@ -121,14 +126,42 @@ def _markers(markers: dict[str, Any], placed: Placed) -> dict[str, Any]:
     """The markers with their places; one that has none now loses that of an earlier file."""
     found: dict[str, Any] = {}
     for name, marker in markers.items():
-        entry = {key: value for key, value in marker.items() if key not in ("placed", "placed_sd")}
         place, sd = placed.get(name, (None, None))
-        if place is not None:
-            entry["placed"] = [round(float(value), DECIMALS) + 0.0 for value in place]
-        if place is not None and sd is not None and all(isfinite(value) for value in sd):
-            entry["placed_sd"] = _sd(sd)
-        found[name] = entry
+        found[name] = {**_without(marker, "placed"), **_estimate("placed", place, sd)}
     return found
+
+
+def _joints(joints: dict[str, Any], freed: Mapping[str, Joint]) -> dict[str, Any]:
+    """The joints with their places and turns; what an earlier file had of them is replaced."""
+    found: dict[str, Any] = {}
+    for name, entry in joints.items():
+        found[name] = _without(_without(entry, "placed"), "axis_turn")
+        if name in freed:
+            joint = freed[name]
+            found[name] |= _estimate("placed", joint.placed, joint.placed_sd)
+            turn, turn_sd = _in_degrees(joint.axis_turn), _in_degrees(joint.axis_turn_sd)
+            found[name] |= _estimate("axis_turn", turn, turn_sd)
+    return found
+
+
+def _without(entry: Mapping[str, Any], key: str) -> dict[str, Any]:
+    return {name: value for name, value in entry.items() if name not in (key, f"{key}_sd")}
+
+
+def _estimate(
+    key: str, value: Sequence[float] | None, sd: Sequence[float] | None
+) -> dict[str, list[float]]:
+    """What calibration found, and its sd where there is one."""
+    if value is None:
+        return {}
+    found = {key: [round(float(one), DECIMALS) + 0.0 for one in value]}
+    if sd is not None and all(isfinite(one) for one in sd):
+        found[f"{key}_sd"] = _sd(sd)
+    return found
+
+
+def _in_degrees(vector: Vector | None) -> list[float] | None:
+    return None if vector is None else [degrees(angle) for angle in vector]
 
 
 def _with_meshes_beside(segments: dict[str, Any], path: Path) -> dict[str, Any]:

@@ -65,6 +65,14 @@ class SkeletonFunctions:
         )
         self.moves_marker = self._moves_marker()
 
+    @property
+    def held(self) -> BoolArray:
+        """(freedoms,) Coordinates that the model holds."""
+        held = np.zeros(self.kinematics.freedoms.size, dtype=bool)
+        free = [c for c in self.skeleton.coordinates if c.follows is None]
+        held[: len(free)] = [c.held is not None for c in free]
+        return held
+
     def marker_positions(self, posture: Posture, numbers: FloatArray) -> FloatArray:
         """(frames, markers, 3) m, laboratory axes."""
         frames = len(posture)
@@ -184,8 +192,7 @@ class FrameProblem:
         frames = len(self)
         lower = np.array([c.lower if c.held is None else c.held for c in coordinates])
         upper = np.array([c.upper if c.held is None else c.held for c in coordinates])
-        pinned = ~self.seen()
-        pinned[:, : len(coordinates)] |= np.array([c.held is not None for c in coordinates])
+        pinned = ~self.seen() | self.functions.held
         return Bounds(np.tile(lower, (frames, 1)), np.tile(upper, (frames, 1)), pinned)
 
     def seen(self) -> BoolArray:

@@ -274,6 +274,8 @@ def fit_report(
             for i, column in enumerate(fit.columns)
             if fit.at_limit[:, i].any()
         },
+        "freedoms": {"without_ties": fit.freedoms, "taken_by_ties": fit.freedoms_tied},
+        "ties": {name: {"largest_error": error} for name, error in fit.tie_errors.items()},
         "coordinates_not_observed": dict(fit.not_observed),
         "warnings": [{"what": f.what, "do": f.do, "needs_a_look": f.needs_look} for f in findings],
     }

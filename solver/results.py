@@ -117,6 +117,9 @@ class TrialFit:
     iterations : (frames,) int
     converged : (frames,) bool
     not_observed : column -> number of frames in which nothing determined it
+    freedoms, freedoms_tied : int
+        Of the skeleton without its ties; how many the ties take away.
+    tie_errors : tie -> largest departure over the trial, m
     """
 
     motion: FittedMotion
@@ -133,6 +136,9 @@ class TrialFit:
     iterations: NDArray[np.int64]
     converged: BoolArray
     not_observed: Mapping[str, int]
+    freedoms: int
+    freedoms_tied: int
+    tie_errors: Mapping[str, float]
 
     def __post_init__(self) -> None:
         frames = len(self.motion.time)

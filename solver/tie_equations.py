@@ -68,6 +68,15 @@ class TieEquations:
         _, J = self.residuals(posture.take(np.array([0])), numbers)
         return int(np.linalg.matrix_rank(J[0], tol=1e-8)) if len(self) else 0
 
+    def largest(self, posture: Posture, numbers: FloatArray) -> dict[str, float]:
+        """Tie -> its largest departure (m) over the frames, the length of its equations together."""
+        values, _ = self.residuals(posture, numbers)
+        names = np.array(self.names)
+        return {
+            name: float(np.linalg.norm(values[:, names == name], axis=1).max())
+            for name in dict.fromkeys(self.names)
+        }
+
     def _function(self, kinematics: Kinematics) -> FrameFunction:
         after, step = kinematics.perturbed(self.expression)
         J = ca.substitute(ca.jacobian(after, step), step, ca.SX.zeros(step.numel()))

@@ -176,6 +176,9 @@ def _assembled(
         iterations=fits.solution.iterations,
         converged=fits.solution.converged,
         not_observed=_not_observed(told),
+        freedoms=int((~problem.functions.held).sum()),
+        freedoms_tied=functions.ties.freedom_taken(fits.posture, problem.numbers),
+        tie_errors=functions.ties.largest(fits.posture, problem.numbers),
     )
 
 

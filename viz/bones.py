@@ -1,6 +1,7 @@
 """Bones to draw: tapered limbs between the joint centres and landmarks a skeleton declares.
 
-Nothing here is measured on bone: the shapes only help the eye. Known ISB landmarks (Wu et al.
+A segment whose model names meshes is drawn by them. Otherwise nothing is measured on bone: the
+shapes only help the eye. Known ISB landmarks (Wu et al.
 2002) turn a segment into a pelvis, thigh, shank, foot or toes; any other segment becomes a shaft
 or a hub of shafts between its joint centres and landmarks, and one without either a small ball.
 One mesh per segment in the segment's frame, built once: frames only move it.
@@ -8,11 +9,14 @@ One mesh per segment in the segment's frame, built once: frames only move it.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import warnings
+from collections.abc import Callable, Sequence
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.model.meshes import GrownShape, load_mesh, place_mesh
 from condyle.solver.results import FittedMotion
 from condyle.viz.bone_depth import below_skin
 from condyle.viz.foot_bones import foot, toes
@@ -33,8 +37,53 @@ HEAD_HEIGHT = 0.22
 def build_bones(motion: FittedMotion) -> tuple[Surface, ...]:
     """One surface per segment, in the segment's frame (m), in the order of the segments."""
     return tuple(
-        skin(shapes, blend=blend) for shapes, blend in map(bone_shapes, plan_segments(motion))
+        mesh_surface(motion.shapes[plan.name])
+        if has_meshes(motion, plan.name)
+        else plain_bone(plan)
+        for plan in plan_segments(motion)
     )
+
+
+def plain_bone(plan: SegmentPlan) -> Surface:
+    """The bone that a segment's joint centres and landmarks suggest."""
+    shapes, blend = bone_shapes(plan)
+    return skin(shapes, blend=blend)
+
+
+def has_meshes(motion: FittedMotion, segment: str) -> bool:
+    """Whether a segment has meshes and all are still there; warns where one is not.
+
+    Results may have moved to a machine without the model: they can still be drawn.
+    """
+    meshes = [grown.shape.mesh for grown in motion.shapes.get(segment, ())]
+    gone = [mesh for mesh in meshes if not Path(mesh).is_file()]
+    for mesh in gone:
+        warnings.warn(f"{mesh} is not there; {segment} is drawn as a plain bone", stacklevel=3)
+    return bool(meshes) and not gone
+
+
+def mesh_surface(shapes: Sequence[GrownShape]) -> Surface:
+    """A segment's own meshes, placed and stretched (m), as one surface.
+
+    Raises
+    ------
+    MeshError
+        Where one is damaged.
+    """
+    placed = [place_mesh(load_mesh(grown.shape.mesh), grown) for grown in shapes]
+    starts = np.cumsum([0, *(len(points) for points, _ in placed[:-1])])
+    points = np.concatenate([points for points, _ in placed])
+    faces = np.concatenate([f + start for (_, f), start in zip(placed, starts, strict=True)])
+    return Surface(points, point_normals(points, faces), faces)
+
+
+def point_normals(points: FloatArray, faces: NDArray[np.int64]) -> FloatArray:
+    """(n, 3) Unit normals: those of the faces around each point, weighted by their areas."""
+    corners = points[faces]
+    across = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
+    normals = np.zeros_like(points)
+    np.add.at(normals, faces.ravel(), np.repeat(across, 3, axis=0))
+    return np.asarray(normals / np.maximum(np.linalg.norm(normals, axis=1, keepdims=True), 1e-30))
 
 
 def bone_shapes(plan: SegmentPlan) -> tuple[list[Shape], float]:

@@ -142,7 +142,7 @@ def test_a_polynomial_means_the_same_in_either_units(
     coefficients: list[float], driver: str, driven: str, x: float
 ) -> None:
     from condyle.model.building import _function
-    from condyle.model.language import MoveEntry
+    from condyle.model.joint_language import MoveEntry
 
     to_input = radians(1) if driver == "rotate" else 1.0
     to_output = radians(1) if driven == "rotate" else 1.0

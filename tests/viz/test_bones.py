@@ -4,13 +4,17 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from itertools import combinations
+from pathlib import Path
 
 import numpy as np
 import pytest
+import trimesh
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
+from condyle.model.meshes import GrownShape
+from condyle.model.skeleton import Shape
 from condyle.solver.results import FittedMotion
 from condyle.viz.bones import bone_shapes, build_bones
 from condyle.viz.shapes import skin
@@ -126,3 +130,33 @@ def test_the_proximal_joint_is_found_though_the_origin_is_elsewhere(
     poses[:, 1] = poses[:, 1] @ shank_from_new
     plan = plan_segments(change(leg, laboratory_from_segment=poses))[1]
     np.testing.assert_allclose(plan.proximal, [-0.01, 0.2, -0.03], atol=1e-12)
+
+
+def test_a_segment_with_meshes_is_drawn_by_them(
+    leg: FittedMotion, change: Callable[..., FittedMotion], tmp_path: Path
+) -> None:
+    boxes = [trimesh.creation.box((0.05, 0.4, 0.04)), trimesh.creation.icosphere(radius=0.03)]
+    shapes = []
+    for index, (box, y) in enumerate(zip(boxes, (-0.2, -0.4), strict=True)):
+        path = tmp_path / f"{index}.ply"
+        box.export(path)
+        shapes.append(GrownShape(Shape(str(path), at=(0.0, y, 0.0)), (1.0, 1.1, 1.0)))
+    thigh, shank = build_bones(change(leg, shapes={"thigh_right": tuple(shapes)}))
+    assert thigh.points[:, 1].max() == pytest.approx(0.0, abs=1e-6)
+    assert thigh.points[:, 1].min() == pytest.approx(-1.1 * 0.43, abs=1e-3)
+    volume = trimesh.Trimesh(thigh.points, thigh.faces, process=False).volume
+    assert volume == pytest.approx(1.1 * sum(box.volume for box in boxes), rel=1e-4)
+    np.testing.assert_allclose(np.linalg.norm(thigh.normals, axis=1), 1.0, atol=1e-12)
+    middle = np.array([0.0, -0.22, 0.0])
+    box_points = thigh.points[:8]
+    assert np.all(np.sum(thigh.normals[:8] * (box_points - middle), axis=1) > 0)
+    np.testing.assert_array_equal(shank.points, build_bones(leg)[1].points)
+
+
+def test_a_mesh_that_has_gone_leaves_a_plain_bone_and_a_warning(
+    leg: FittedMotion, change: Callable[..., FittedMotion], tmp_path: Path
+) -> None:
+    gone = GrownShape(Shape(str(tmp_path / "gone.stl")))
+    with pytest.warns(UserWarning, match=r"gone\.stl is not there; thigh_right is drawn"):
+        thigh = build_bones(change(leg, shapes={"thigh_right": (gone,)}))[0]
+    np.testing.assert_array_equal(thigh.points, build_bones(leg)[0].points)
