@@ -19,6 +19,14 @@ def is_seen(positions: FloatArray) -> NDArray[np.bool_]:
     return np.asarray(np.isfinite(positions).all(axis=-1), dtype=np.bool_)
 
 
+def mean_positions(positions: FloatArray) -> FloatArray:
+    """(markers, 3) Mean over the frames in which each was seen; NaN where never."""
+    seen = is_seen(positions)
+    count = seen.sum(axis=0)
+    total = np.where(seen[..., None], positions, 0.0).sum(axis=0)
+    return np.asarray(total / np.where(count, count, np.nan)[:, None])
+
+
 @dataclass(frozen=True, slots=True)
 class Event:
     """A named instant (s, on the recording's own clock)."""

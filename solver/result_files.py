@@ -15,22 +15,23 @@ from typing import Any
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
-from scipy.spatial.transform import Rotation
 
 from condyle.model.errors import CondyleError
 from condyle.model.meshes import GrownShape
 from condyle.model.skeleton import Shape, Skeleton, Turn, Vector
 from condyle.model.whole_files import cannot_write, whole_file
-from condyle.recording.recording import is_seen
-from condyle.solver.posture import quaternions_of, rotations
-from condyle.solver.quality import Finding, error_summary
+from condyle.solver.posture import rotations
+from condyle.solver.quality import Finding
 from condyle.solver.results import FittedMotion, TrialFit
 
 FloatArray = NDArray[np.float64]
-
-CAUTION = (
-    "A measuring aid, not a diagnosis: decisions on treatment or training belong to licensed "
-    "practice."
+from condyle.solver.fit_report import fit_report
+from condyle.solver.result_tables import (
+    column_meanings,
+    coordinate_table,
+    marker_table,
+    segment_table,
+    summary_table,
 )
 
 
@@ -97,119 +98,6 @@ def _without_nan(value: Any) -> Any:
     return value
 
 
-def _in_file_units(values: FloatArray, units: list[str]) -> FloatArray:
-    factor = np.array([np.degrees(1.0) if unit == "rad" else 1.0 for unit in units])
-    return np.asarray(values * factor)
-
-
-def coordinate_table(fit: TrialFit) -> pd.DataFrame:
-    """One row a frame: frame, time, and for each number its value, sd and whether at a limit."""
-    units = [column.unit for column in fit.columns]
-    values, sd = _in_file_units(fit.values, units), _in_file_units(fit.sd, units)
-    table: dict[str, Any] = {"frame": fit.motion.frame, "time": fit.motion.time}
-    for i, column in enumerate(fit.columns):
-        table[column.name] = values[:, i]
-        table[f"{column.name}.sd"] = sd[:, i]
-        if column.has_range:
-            table[f"{column.name}.at_limit"] = fit.at_limit[:, i]
-    return pd.DataFrame(table)
-
-
-def column_meanings(fit: TrialFit) -> pd.DataFrame:
-    """Name, unit and meaning of each column of the coordinate table."""
-    rows = [
-        ("frame", "1", "the recording's own frame number"),
-        ("time", "s", "(frame - 1) / rate"),
-    ]
-    for column in fit.columns:
-        unit = "deg" if column.unit == "rad" else "m"
-        rows.append((column.name, unit, column.meaning))
-        rows.append((f"{column.name}.sd", unit, "standard deviation; empty where undetermined"))
-        if column.has_range:
-            rows.append((f"{column.name}.at_limit", "1", "1 where it is at a limit of its range"))
-    return pd.DataFrame(rows, columns=["column", "unit", "meaning"])
-
-
-def marker_table(fit: TrialFit) -> pd.DataFrame:
-    """One row a frame and marker, then the recording's other labels."""
-    motion = fit.motion
-    markers, others = len(motion.marker_names), len(fit.other_labels)
-    frames = len(motion.time)
-    measured = np.concatenate([motion.measured, fit.other_positions], axis=1)
-    fitted = np.concatenate([motion.fitted, np.full((frames, others, 3), np.nan)], axis=1)
-    names = np.array([*motion.marker_names, *fit.other_labels], dtype=object)
-    why = np.concatenate([fit.why_not, np.full((frames, others), "not_in_model")], axis=1)
-    used = np.concatenate([motion.used, np.zeros((frames, others), dtype=bool)], axis=1)
-    flat_measured, flat_fitted = measured.reshape(-1, 3), fitted.reshape(-1, 3)
-    return pd.DataFrame(
-        {
-            "frame": np.repeat(motion.frame, markers + others),
-            "time": np.repeat(motion.time, markers + others),
-            "marker": pd.Categorical(np.tile(names, frames)),
-            **{axis: flat_measured[:, i] for i, axis in enumerate("xyz")},
-            **{f"fit_{axis}": flat_fitted[:, i] for i, axis in enumerate("xyz")},
-            "error": np.linalg.norm(flat_measured - flat_fitted, axis=1),
-            "used": used.ravel(),
-            "why_not": pd.Categorical(why.ravel()),
-        }
-    ).astype({"marker": str, "why_not": str})
-
-
-def segment_table(motion: FittedMotion) -> pd.DataFrame:
-    """One row a frame and segment: origin (m) and unit quaternion, continuous in sign."""
-    frames, segments = motion.laboratory_from_segment.shape[:2]
-    quaternions = continuous_quaternions(motion.laboratory_from_segment[..., :3, :3])
-    origins = motion.laboratory_from_segment[..., :3, 3].reshape(-1, 3)
-    flat = quaternions.reshape(-1, 4)
-    return pd.DataFrame(
-        {
-            "frame": np.repeat(motion.frame, segments),
-            "time": np.repeat(motion.time, segments),
-            "segment": np.tile(np.array(motion.segment_names, dtype=object), frames),
-            **{axis: origins[:, i] for i, axis in enumerate("xyz")},
-            **{name: flat[:, i] for i, name in enumerate(("qw", "qx", "qy", "qz"))},
-        }
-    )
-
-
-def continuous_quaternions(rotation: FloatArray) -> FloatArray:
-    """(frames, segments, 4) scalar first, sign continuous in time, the first scalar part >= 0."""
-    frames, segments = rotation.shape[:2]
-    stack = Rotation.from_matrix(rotation.reshape(-1, 3, 3))
-    q = quaternions_of(stack).reshape(frames, segments, 4)
-    first = np.where(q[:1, :, :1] < 0, -1.0, 1.0)
-    turns = np.where((q[1:] * q[:-1]).sum(axis=2, keepdims=True) < 0, -1.0, 1.0)
-    return np.asarray(q * np.cumprod(np.concatenate([first, turns]), axis=0))
-
-
-def summary_table(fit: TrialFit) -> pd.DataFrame:
-    """Per number: minimum, maximum, range, and when the extremes occur."""
-    units = [column.unit for column in fit.columns]
-    determined = np.isfinite(fit.sd)
-    values = np.where(determined, _in_file_units(fit.values, units), np.nan)
-    rows = []
-    for i, column in enumerate(fit.columns):
-        unit = "deg" if column.unit == "rad" else "m"
-        if not determined[:, i].any():
-            rows.append((column.name, unit, *[np.nan] * 5))
-            continue
-        low, high = int(np.nanargmin(values[:, i])), int(np.nanargmax(values[:, i]))
-        least, most = values[low, i], values[high, i]
-        rows.append(
-            (
-                column.name,
-                unit,
-                least,
-                most,
-                most - least,
-                fit.motion.time[low],
-                fit.motion.time[high],
-            )
-        )
-    names = ["name", "unit", "minimum", "maximum", "range", "time_of_minimum", "time_of_maximum"]
-    return pd.DataFrame(rows, columns=names)
-
-
 def skeleton_geometry(motion: FittedMotion, skeleton: Skeleton) -> dict[str, Any]:
     """The sized skeleton's places, so that a picture needs nothing but this folder."""
     return {
@@ -229,64 +117,6 @@ def skeleton_geometry(motion: FittedMotion, skeleton: Skeleton) -> dict[str, Any
             segment: [asdict(grown) for grown in shapes]
             for segment, shapes in motion.shapes.items()
         },
-    }
-
-
-def fit_report(
-    fit: TrialFit, skeleton: Skeleton, findings: list[Finding], origin: Mapping[str, Any]
-) -> dict[str, Any]:
-    """Everything `fit.json` says."""
-    motion = fit.motion
-    error, used = motion.error, motion.used
-    whole = error_summary(error, used)
-    present = is_seen(motion.measured)
-    placed = is_seen(motion.fitted)
-    segment_of = {marker.name: marker.segment for marker in skeleton.markers}
-    owner = np.array([segment_of[name] for name in motion.marker_names])
-    return {
-        "caution": CAUTION,
-        **origin,
-        "up": {"axis": motion.up, "how": motion.up_how},
-        "frames": len(motion.time),
-        "rate": fit.rate,
-        "rms_error": whole.rms,
-        "largest_error": whole.largest,
-        "marker_frames": {
-            "present": int((present & placed).sum()),
-            "used": int(used.sum()),
-        },
-        "markers": {
-            name: vars_of(error_summary(error[:, i], used[:, i]))
-            for i, name in enumerate(motion.marker_names)
-        },
-        "segments": {
-            name: vars_of(error_summary(error[:, owner == name], used[:, owner == name]))
-            for name in motion.segment_names
-        },
-        "markers_without_label": [
-            name for i, name in enumerate(motion.marker_names) if not present[:, i].any()
-        ],
-        "labels_not_in_model": list(fit.other_labels),
-        "frames_not_converged": motion.frame[~fit.converged].tolist(),
-        "largest_projected_gradient": float(fit.optimality.max(initial=0.0)),
-        "limits_reached": {
-            column.name: int(fit.at_limit[:, i].sum())
-            for i, column in enumerate(fit.columns)
-            if fit.at_limit[:, i].any()
-        },
-        "freedoms": {"without_ties": fit.freedoms, "taken_by_ties": fit.freedoms_tied},
-        "ties": {name: {"largest_error": error} for name, error in fit.tie_errors.items()},
-        "coordinates_not_observed": dict(fit.not_observed),
-        "warnings": [{"what": f.what, "do": f.do, "needs_a_look": f.needs_look} for f in findings],
-    }
-
-
-def vars_of(summary: Any) -> dict[str, Any]:
-    """The fields of an error summary, for JSON."""
-    return {
-        "rms_error": summary.rms,
-        "largest_error": summary.largest,
-        "marker_frames": summary.count,
     }
 
 

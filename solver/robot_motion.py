@@ -17,7 +17,8 @@ from condyle.model.errors import CondyleError
 from condyle.model.robot import RobotDescription, joint_numbers
 from condyle.model.robot_chains import robot_description
 from condyle.model.skeleton import Floating, Skeleton, Spherical
-from condyle.solver.result_files import continuous_quaternions, load_motion
+from condyle.solver.result_files import load_motion
+from condyle.solver.result_tables import continuous_quaternions
 from condyle.solver.results import FittedMotion
 from condyle.solver.upright import Upright
 

@@ -13,8 +13,8 @@ from condyle.model.growth import sized_lengths
 from condyle.pipeline import SizedSubject, SolvedTrial
 from condyle.recording.describing import RecordingReport, report_lines
 from condyle.screen import progress, say, show_findings, show_json, show_table
+from condyle.solver.fit_report import CAUTION
 from condyle.solver.quality import Finding, error_summary
-from condyle.solver.result_files import CAUTION
 
 if TYPE_CHECKING:
     from condyle.demo_data import AngleErrors
