@@ -43,8 +43,10 @@ def cost_per_marker(problem: FrameProblem, cost: FloatArray) -> FloatArray:
 def badly_fitted(problem: FrameProblem, solution: Solution) -> IntArray:
     """Rows whose cost stands out from the trial's median, or that did not converge."""
     each = cost_per_marker(problem, solution.cost)
+    told = problem.weights.any(axis=1)
+    usual = np.median(each[told]) if told.any() else 0.0
     # Whitened units: 1e-6 is a thousandth of a marker's sd, the level of noise-free data.
-    return np.flatnonzero((each > BAD_FACTOR * np.median(each) + 1e-6) | ~solution.converged)
+    return np.flatnonzero((each > BAD_FACTOR * usual + 1e-6) | ~solution.converged)
 
 
 def fit_cold(

@@ -83,7 +83,7 @@ def fit_frames(
         solution,
         solution.optimality(problem),
         covariance(H, free),
-        involved | unseen,
+        (involved | unseen) & ~problem.functions.held,
         at_limit,
     )
 

@@ -13,17 +13,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.kinematics import Kinematics
-from condyle.model.skeleton import LABORATORY, Coordinate, Skeleton, Spherical
+from condyle.model.skeleton import LABORATORY, Coordinate, Skeleton
 from condyle.solver.cone_limits import add_limits, limited_balls
 from condyle.solver.least_squares import Bounds
 from condyle.solver.normal_equations import NormalEquations
 from condyle.solver.over_frames import FrameFunction, Replay
 from condyle.solver.posture import (
     Posture,
-    inverse_right_jacobian,
-    rotations,
     upright_posture,
 )
+from condyle.solver.rest_pulls import add_ball_pull, pulled_balls
 from condyle.solver.tie_equations import TieEquations
 
 FloatArray = NDArray[np.float64]
@@ -40,6 +39,7 @@ class SkeletonFunctions:
     normal_equations : NormalEquations
     ties : TieEquations
     limited_balls : spherical joints with a cone or a twist range
+    pulled_balls : spherical joints with a pull to rest
     moves_marker : (freedoms, markers) bool
         Whether a freedom moves a marker at all.
     """
@@ -50,6 +50,7 @@ class SkeletonFunctions:
         self.normal_equations = NormalEquations(self.kinematics)
         self.ties = TieEquations(self.kinematics)
         self.limited_balls = limited_balls(self.kinematics)
+        self.pulled_balls = pulled_balls(self.kinematics)
         inputs = [self.kinematics.scalars, self.kinematics.quaternions, self.kinematics.numbers]
         self._markers: FrameFunction = Replay(
             ca.Function("markers", inputs, [ca.densify(self.kinematics.marker_positions)])
@@ -165,7 +166,9 @@ class FrameProblem:
         )
         self._add_ties(posture, H, g, cost)
         self._add_scalar_pulls(posture, H, g, cost)
-        self._add_ball_pulls(posture, H, g, cost)
+        for pulled in self.functions.pulled_balls:
+            here = self.functions.kinematics.freedoms.ball_slice(pulled[0])
+            add_ball_pull(pulled, posture, here, H, g, cost)
         return H, g, cost
 
     def with_weights(self, weights: FloatArray) -> FrameProblem:
@@ -207,21 +210,12 @@ class FrameProblem:
         pulled = np.zeros(freedoms.size, dtype=bool)
         for k, coordinate in enumerate(self._free_coordinates()):
             pulled[k] = coordinate.rest_sd is not None
-        for ball, sd in enumerate(self._ball_rest_sds()):
-            pulled[freedoms.ball_slice(ball)] = np.isfinite(sd)
+        for ball, _ in self.functions.pulled_balls:
+            pulled[freedoms.ball_slice(ball)] = True
         return pulled
 
     def _free_coordinates(self) -> list[Coordinate]:
         return [c for c in self.functions.skeleton.coordinates if c.follows is None]
-
-    def _ball_rest_sds(self) -> list[float]:
-        by_name = {joint.name: joint.motion for joint in self.functions.skeleton.joints}
-        sds = []
-        for name in self.functions.kinematics.freedoms.balls:
-            motion = by_name[name]
-            sd = motion.rest_sd if isinstance(motion, Spherical) else None
-            sds.append(np.inf if sd is None else sd)
-        return sds
 
     def _add_ties(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
         ties = self.functions.ties
@@ -244,17 +238,3 @@ class FrameProblem:
             H[:, k, k] += coordinate.rest_sd**-2
             g[:, k] += departure / coordinate.rest_sd
             cost += departure**2 / 2
-
-    def _add_ball_pulls(
-        self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray
-    ) -> None:
-        freedoms = self.functions.kinematics.freedoms
-        for ball, sd in enumerate(self._ball_rest_sds()):
-            if not np.isfinite(sd):
-                continue
-            vector = rotations(posture.quaternions[:, ball]).as_rotvec()
-            J = inverse_right_jacobian(vector)
-            here = freedoms.ball_slice(ball)
-            H[:, here, here] += np.swapaxes(J, 1, 2) @ J / sd**2
-            g[:, here] -= np.einsum("nij,ni->nj", J, vector) / sd**2
-            cost += (vector**2).sum(axis=1) / (2 * sd**2)

@@ -34,31 +34,33 @@ def place_markers(
     skeleton, evaluator = problem.functions.skeleton, problem.evaluator
     n, groups = problem.coordinates, evaluator.groups
     sizes = posture.scalars[0, n : n + groups]
-    points, J = evaluator.points(posture, problem.upright)
+    points, _ = evaluator.points(posture, problem.upright)
     nominal, nominal_rates = evaluator.nominal_places(sizes)
     numbers = evaluator.numbers(sizes, problem.upright)
     own = Posture(posture.scalars[:, :n], posture.quaternions)
     poses = problem.functions.poses(own, numbers)[0]
     measured = mean_positions(matched.positions[still.frames])
-    found = []
-    for i, marker in enumerate(skeleton.markers):
-        if not is_seen(measured[i]):
-            continue
-        R = poses[skeleton.segment_index(marker.segment)][:3, :3]
-        within = marker.placed_within if marker.at is not None else np.inf
-        share = 1.0 if np.isinf(within) else within**2 / (within**2 + MEASUREMENT_SD**2)
-        departure = share * R.T @ (measured[i] - points[i])
-        rates = -share * R.T @ J[3 * i : 3 * i + 3]
-        if marker.at is not None:
-            rates[:, n : n + groups] += nominal_rates[i]
-        variance = rates @ cov @ rates.T + share * MEASUREMENT_SD**2 * np.eye(3)
-        found.append(
-            PlacedMarker(
-                marker.name,
-                as_vector(nominal[i] + departure),
-                as_vector(np.sqrt(np.diag(variance))),
-                as_vector(departure) if marker.at is not None else None,
-                marker.placed_within if marker.at is not None else None,
-            )
+    rotation = np.array(
+        [poses[skeleton.segment_index(m.segment), :3, :3] for m in skeleton.markers]
+    )
+    within = np.array([m.placed_within if m.at is not None else np.inf for m in skeleton.markers])
+    share = 1 / (1 + (MEASUREMENT_SD / within) ** 2)
+    away = np.einsum("mji,mj->mi", rotation, np.nan_to_num(measured - points))
+    moving = evaluator.fixed_point_rates(posture, problem.upright, nominal + away)
+    rates = -share[:, None, None] * np.swapaxes(rotation, 1, 2) @ moving
+    # placed = (1 - k) m + k R' (y - o): what grows with the segment is only the prior's part.
+    rates[:, :, n : n + groups] += (1 - share)[:, None, None] * nominal_rates
+    variance = np.einsum("mai,ij,maj->ma", rates, cov, rates, optimize=True)
+    sd = np.sqrt(variance + (share * MEASUREMENT_SD**2)[:, None])
+    departure = share[:, None] * away
+    return tuple(
+        PlacedMarker(
+            marker.name,
+            as_vector(nominal[i] + departure[i]),
+            as_vector(sd[i]),
+            as_vector(departure[i]) if marker.at is not None else None,
+            marker.placed_within if marker.at is not None else None,
         )
-    return tuple(found)
+        for i, marker in enumerate(skeleton.markers)
+        if is_seen(measured[i])
+    )

@@ -159,7 +159,8 @@ def check_scale(alignment: Alignment, recording: Recording, skeleton: Skeleton) 
     FitError
         Naming the factor, and the unit that would explain it.
     """
-    scale = float(np.median(alignment.scale))
+    told = alignment.scale[alignment.points >= 3]
+    scale = float(np.median(told)) if len(told) else 0.0
     if scale <= 0 or SCALE_LIMITS[0] <= scale <= SCALE_LIMITS[1]:
         return
     wrong = {"mm": "m", "m": "mm"}.get(recording.units, "another unit")

@@ -30,6 +30,8 @@ class Alignment:
         Whether a reflection would fit better than the rotation.
     misfit : (frames,) m
         Weighted RMS distance after the rigid motion, at the best scale.
+    points : (frames,) int
+        How many points had a weight.
     """
 
     rotation: FloatArray
@@ -38,6 +40,7 @@ class Alignment:
     spread: FloatArray
     mirrored: NDArray[np.bool_]
     misfit: FloatArray
+    points: NDArray[np.int64]
 
 
 def align(reference: FloatArray, measured: FloatArray, weights: FloatArray) -> Alignment:
@@ -72,4 +75,5 @@ def align(reference: FloatArray, measured: FloatArray, weights: FloatArray) -> A
     spread = D[:, 1] / np.maximum(D[:, 0], np.finfo(float).tiny)
     power = (share * (centred_to**2).sum(axis=2)).sum(axis=1)
     misfit = np.sqrt(np.maximum(power - scale**2 * variance, 0.0))
-    return Alignment(rotation, translation, scale, spread, sign < 0, misfit)
+    points = (weights > 0).sum(axis=1)
+    return Alignment(rotation, translation, scale, spread, sign < 0, misfit, points)

@@ -62,6 +62,18 @@ class SizingFunctions:
             [ca.densify(tied), ca.densify(tie_rates)],
         )
         self._points = ca.Function("sized_markers", inputs, [points, ca.densify(derivatives)])
+        places = ca.SX.sym("places", 3 * len(skeleton.markers))
+        fixed = grown_numbers_expression(skeleton, factors, places, upright)
+        fixed_points = ca.substitute(positions, kinematics.numbers, fixed)
+        fixed_rates = ca.horzcat(
+            ca.jacobian(fixed_points, step[:n]),
+            ca.jacobian(fixed_points, sizes),
+            ca.SX(points.numel(), 1),
+            ca.jacobian(fixed_points, step[n:]),
+        )
+        self._fixed_rates = ca.Function(
+            "fixed_markers", [*inputs, places], [ca.densify(fixed_rates)]
+        )
         self._places = ca.Function(
             "places", [sizes], [nominal, ca.densify(ca.jacobian(nominal, sizes))]
         )
@@ -78,6 +90,22 @@ class SizingFunctions:
             0,
         )
         return np.asarray(points).reshape(-1, 3), np.asarray(J)
+
+    def fixed_point_rates(
+        self, posture: Posture, upright: Upright, places: FloatArray
+    ) -> FloatArray:
+        """(markers, 3, freedoms) How points at (markers, 3) `places`, which do not grow, move."""
+        n = len(self._functions.kinematics.freedoms.scalars)
+        J = self._fixed_rates(
+            posture.scalars[0, :n],
+            posture.quaternions[0].ravel(),
+            posture.scalars[0, n : n + self.groups],
+            upright.laboratory_from_upright.ravel(),
+            0,
+            places.ravel(),
+        )
+        J = np.asarray(J)
+        return np.asarray(J.reshape(len(places), 3, J.shape[1]))
 
     def ties(self, posture: Posture, upright: Upright) -> tuple[FloatArray, FloatArray]:
         """Tie residuals (rows,) over their sd, and (rows, freedoms) derivatives."""

@@ -25,6 +25,7 @@ from condyle.solver.frame_problem import SkeletonFunctions
 from condyle.solver.least_squares import Bounds
 from condyle.solver.posture import Posture
 from condyle.solver.reported import reported_values
+from condyle.solver.rest_pulls import add_ball_pull
 from condyle.solver.sizing_functions import SizingFunctions
 from condyle.solver.upright import Upright
 
@@ -83,7 +84,7 @@ class SizingProblem:
         cost += self._size_terms(posture, H, g)
         cost += self._posture_terms(posture, H, g)
         whole = H[None], g[None], np.array([cost])
-        self._add_limits(posture, *whole)
+        self._add_balls(posture, *whole)
         return whole
 
     def curvature(self, posture: Posture, rows: IntArray) -> FloatArray:
@@ -97,11 +98,17 @@ class SizingProblem:
         g -= J.T @ residual
         return 0.5 * float(residual @ residual)
 
-    def _add_limits(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
-        columns = self.step_columns()
-        for ball in self.functions.limited_balls:
-            first = columns[self.functions.kinematics.freedoms.ball_slice(ball.ball)][0]
-            add_limits(ball, posture, slice(first, first + 3), H, g, cost)
+    def _add_balls(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
+        """Limits and pulls of spherical joints."""
+        for limited in self.functions.limited_balls:
+            add_limits(limited, posture, self._ball_slice(limited.ball), H, g, cost)
+        for pulled in self.functions.pulled_balls:
+            add_ball_pull(pulled, posture, self._ball_slice(pulled[0]), H, g, cost)
+
+    def _ball_slice(self, ball: int) -> slice:
+        own = self.functions.kinematics.freedoms.ball_slice(ball)
+        first = int(self.step_columns()[own][0])
+        return slice(first, first + 3)
 
     def _size_terms(self, posture: Posture, H: FloatArray, g: FloatArray) -> float:
         """Factors about the overall scale, and the scale about what is known of it."""
@@ -146,7 +153,10 @@ class SizingProblem:
         H = np.zeros((self.freedoms, self.freedoms))
         self._size_terms(posture, H, np.zeros(self.freedoms))
         self._posture_terms(posture, H, np.zeros(self.freedoms))
-        return np.asarray(np.diag(H) > 0)
+        pulled = np.diag(H) > 0
+        for ball, _ in self.functions.pulled_balls:
+            pulled[self._ball_slice(ball)] = True
+        return np.asarray(pulled)
 
     def start_scalars(self) -> FloatArray:
         """Every coordinate as expected in the static, else at rest; every factor 1."""
@@ -175,4 +185,5 @@ class SizingProblem:
         moved |= self.functions.ties.moved_by
         columns = self.step_columns()
         pinned[columns] &= ~moved
+        pinned[columns] |= self.functions.held
         return Bounds(np.r_[lower, -extra][None], np.r_[upper, extra][None], pinned[None])

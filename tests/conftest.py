@@ -8,14 +8,15 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from numpy.typing import NDArray
+from scipy.spatial.transform import Rotation
+
 from condyle.model import load_skeleton
 from condyle.model.skeleton import Skeleton
 from condyle.recording.recording import Recording
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.least_squares import Bounds
 from condyle.solver.posture import Posture
-from numpy.typing import NDArray
-from scipy.spatial.transform import Rotation
 
 FloatArray = NDArray[np.float64]
 ROOT = Path(__file__).resolve().parents[1]
