@@ -57,10 +57,10 @@ DE_LEVA_HAND_TO_FINGERTIP = 0.3624
 # clavicle from memory.
 PUBLISHED_RANGES = [
     ("lumbar_flexion", -30 - 10, 75, "handbooks"),
-    ("lumbar_bending", -35, 35, "handbooks"),
+    ("lumbar_side_bend", -35, 35, "handbooks"),
     ("neck_flexion", -55, 90, "handbooks"),
-    ("neck_bending", -45, 45, "handbooks"),
-    ("neck_rotation", -80, 80, "handbooks"),
+    ("neck_side_bend", -45, 45, "handbooks"),
+    ("neck_twist", -80, 80, "handbooks"),
     ("clavicle_protraction_right", -30, 30, "handbooks"),
     ("clavicle_elevation_right", -10, 45, "handbooks"),
     ("elbow_flexion_right", -4.7 - 10, 150 + 10, "Soucie 2011"),
@@ -358,11 +358,11 @@ def test_pronation_axis_joins_radial_head_and_ulnar_head(functions: SkeletonFunc
 
 MIDLINE_SIGNS = [  # coordinate, segment, point of it, axis, sign
     ("lumbar_flexion", "thorax", (0, 0.1, 0), 0, +1),  # the chest goes forward
-    ("lumbar_bending", "thorax", (0, 0.1, 0), 2, +1),  # to the right
-    ("lumbar_rotation", "thorax", (0, 0, 0.15), 0, +1),  # the right side forward
+    ("lumbar_side_bend", "thorax", (0, 0.1, 0), 2, +1),  # to the right
+    ("lumbar_twist", "thorax", (0, 0, 0.15), 0, +1),  # the right side forward
     ("neck_flexion", "head", (0, 0.15, 0), 0, +1),
-    ("neck_bending", "head", (0, 0.15, 0), 2, +1),
-    ("neck_rotation", "head", (0.1, 0, 0), 2, -1),  # the face to the left
+    ("neck_side_bend", "head", (0, 0.15, 0), 2, +1),
+    ("neck_twist", "head", (0.1, 0, 0), 2, -1),  # the face to the left
 ]
 
 SIGNS = [
@@ -457,7 +457,7 @@ def test_girdle_moves_the_arm_and_leaves_its_attitude_to_the_thorax(
 def test_shared_coordinates_are_the_whole_turn(
     functions: SkeletonFunctions, joint: str, child: str, sequence: str
 ) -> None:
-    word, sign = {"z": ("flexion", -1), "x": ("bending", 1), "y": ("rotation", 1)}[sequence]
+    word, sign = {"z": ("flexion", -1), "x": ("side_bend", 1), "y": ("twist", 1)}[sequence]
     moved = pose(functions, posture_of(functions, {f"{joint}_{word}": 30}), child)[:3, :3]
     expected = Rotation.from_euler(sequence, sign * 30, degrees=True).as_matrix()
     np.testing.assert_allclose(moved, expected, atol=1e-12)
@@ -611,8 +611,8 @@ def test_mirrored_markers_give_the_same_clinical_angles(functions: SkeletonFunct
     plain = without_pull(MODEL)
     told = told_angles(functions, fitted(plain, as_recorded)[1])
     mirrored = told_angles(functions, fitted(plain, swapped)[1])
-    reverse = {"pelvis_z", "pelvic_rotation", "pelvic_obliquity", "lumbar_bending"}
-    reverse |= {"lumbar_rotation", "neck_bending", "neck_rotation"}
+    reverse = {"pelvis_z", "pelvic_rotation", "pelvic_obliquity", "lumbar_side_bend"}
+    reverse |= {"lumbar_twist", "neck_side_bend", "neck_twist"}
     for name, values in told.items():
         sign = -1 if name in reverse else 1
         off = wrapped(mirrored[other_side(name)] - sign * values)
