@@ -4,6 +4,9 @@ Files merge key by key, the deepest base first. A mapping merges with a mapping;
 lists too, replaces what was there. `null` removes an entry of the base; a `null` that removes
 nothing stays in the tree, because it may be meant for a twin that the mirror would make
 (:mod:`condyle.model.mirroring`). Every value keeps the file and line it was written in.
+
+A base's path begins in the folder of the file that names it, and never leads out of the folder of
+the outermost one: a model that somebody sent can read nothing but what came with it.
 """
 
 from __future__ import annotations
@@ -78,6 +81,7 @@ def merged_tree(source: Path | Traversable, mistakes: Mistakes) -> Merged | None
     chain: list[Node] = []
     seen: list[str] = []
     place: Path | Traversable | None = source
+    folder = Path(str(source)).parent.resolve()
     complete = True
     while place is not None:
         seen.append(_identity(place))
@@ -86,7 +90,7 @@ def merged_tree(source: Path | Traversable, mistakes: Mistakes) -> Merged | None
             complete = False
             break
         chain.append(top)
-        place, sound = _base_of(top, place, seen, mistakes)
+        place, sound = _base_of(top, place, folder, seen, mistakes)
         complete = complete and sound
     if not chain:
         return None
@@ -132,7 +136,7 @@ def _is_model(top: Node, mistakes: Mistakes) -> bool:
 
 
 def _base_of(
-    top: Node, place: Path | Traversable, seen: list[str], mistakes: Mistakes
+    top: Node, place: Path | Traversable, folder: Path, seen: list[str], mistakes: Mistakes
 ) -> tuple[Path | Traversable | None, bool]:
     """The file that this one extends, and whether the chain is sound so far."""
     node = top.entries.get("extends")
@@ -142,13 +146,8 @@ def _base_of(
         remedy = "Write a shipped model's name, or a path beside this file."
         mistakes.add(node, "'extends' is not a name.", remedy)
         return None, False
-    base = _find_base(node.value, place)
-    if base is None and (Path(node.value).suffix in _ENDINGS or len(Path(node.value).parts) > 1):
-        problem = f"there is no file '{node.value}' beside this one."
-        mistakes.add(node, problem, "Check the path: it begins in the folder of this file.")
-        return None, False
+    base = _find_base(node, place, folder, mistakes)
     if base is None:
-        mistakes.add_unknown(node, "base model", node.value, shipped_models())
         return None, False
     if _identity(base) in seen:
         problem = f"'extends' goes round in a circle: '{node.value}' builds on this file."
@@ -161,18 +160,39 @@ def _base_of(
     return base, True
 
 
-def _find_base(name: str, place: Path | Traversable) -> Path | Traversable | None:
+def _find_base(
+    node: Node, place: Path | Traversable, folder: Path, mistakes: Mistakes
+) -> Path | Traversable | None:
     """A base by its shipped name, or by its path beside the file that names it."""
+    name = str(node.value)
     if name in shipped_models():
         return files(_SHIPPED) / f"{name}.yaml"
     beside = Path(str(place)).parent / name
-    return beside if _exists(beside) else None
+    if not _is_within(beside, folder):
+        problem = f"the base model '{name}' is not in the model's folder."
+        mistakes.add(node, problem, "Put it beside the model, and name it from there.")
+    elif _exists(beside):
+        return beside
+    elif Path(name).suffix in _ENDINGS or len(Path(name).parts) > 1:
+        problem = f"there is no file '{name}' beside this one."
+        mistakes.add(node, problem, "Check the path: it begins in the folder of this file.")
+    else:
+        mistakes.add_unknown(node, "base model", name, shipped_models())
+    return None
 
 
 def _exists(path: Path) -> bool:
     try:
         return path.is_file()
     except (OSError, ValueError):  # a name too long for the system, or with a zero byte in it
+        return False
+
+
+def _is_within(base: Path, folder: Path) -> bool:
+    """Whether a file is in `folder` or below it, wherever links lead."""
+    try:
+        return base.resolve().is_relative_to(folder)
+    except (OSError, ValueError, RuntimeError):
         return False
 
 

@@ -96,6 +96,7 @@ def _check_regression(
         listed = ", ".join(absent)
         problem = f"{regression} needs landmarks that '{joint.from_}' does not have: {listed}."
         mistakes.add(place, problem, "Add them, or remove `centre_from`.")
+        return
     centre = landmarks.get(joint.at) if isinstance(joint.at, str) else joint.at
     if centre is not None and centre[2] == 0.0:
         problem = f"{regression} cannot tell whether '{name}' is the right hip: its z is 0."

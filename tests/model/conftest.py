@@ -49,6 +49,44 @@ markers:
   cluster: {segment: shank}
 """
 
+TIED = """\
+condyle: 1
+segments:
+  thorax: {landmarks: {IJ: [0, 0, 0]}}
+  scapula: {landmarks: {AI: [-0.02, -0.12, 0]}}
+  pelvis: {landmarks: {ASIS_right: [0, 0, 0.1], ASIS_left: [0, 0, -0.1], PSIS_right: [-0.1, 0, 0.1]}}
+  thigh: {}
+  bar: {}
+joints:
+  root:
+    from: laboratory
+    to: thorax
+    floating: {position: [x, y, z], angles: {sequence: [y, x, z], names: [a, b, c]}}
+  scapula:
+    from: thorax
+    to: scapula
+    spherical: {angles: {sequence: [y, x, z], names: [d, e, f]}, cone: 60, twist: [-40, 40]}
+  back: {from: thorax, to: pelvis, fixed: true}
+  hip: {from: pelvis, to: thigh, at: [0, 0, 0.09], moves: [{rotate: z, coordinate: hip_flexion}]}
+  bar: {from: laboratory, to: bar, fixed: true}
+ties:
+  grip: {point: [scapula, AI], meets: [bar, [0, 0, 0.25]]}
+  seat: {point: [thorax, IJ], on_plane: {of: laboratory, through: [0, 0, 0], normal: y}}
+  glide: {point: [scapula, AI], on_ellipsoid: {of: thorax, centre: IJ, radii: [0.1, 0.2, 0.1]}}
+  rod: {point: [bar, [0, 0, 0]], stays: {distance: 0.3, from: [thorax, IJ]}}
+sizing:
+  joints:
+    hip: {place_sd: 0.012, axis_sd: 4}
+markers:
+  M: {segment: thigh, at: [0, 0, 0], placed: [0, 0, 0], placed_sd: [0, 0, 0]}
+"""
+
+
+@pytest.fixture
+def tied() -> str:
+    """A sound model with every kind of tie, limits of a spherical joint, and a freed joint."""
+    return TIED
+
 
 @pytest.fixture
 def leg() -> str:

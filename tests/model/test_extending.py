@@ -89,9 +89,10 @@ def test_a_longer_circle_of_extends_is_told(report: Callable[..., str]) -> None:
 
 def test_a_base_stands_beside_the_file_that_names_it(tmp_path: Path, leg: str) -> None:
     (tmp_path / "study").mkdir()
-    (tmp_path / "base.yaml").write_text(leg)
-    top = tmp_path / "study" / "top.yaml"
-    top.write_text("condyle: 1\nextends: ../base.yaml\n")
+    (tmp_path / "study" / "base.yaml").write_text(leg)
+    (tmp_path / "study" / "middle.yaml").write_text("condyle: 1\nextends: base.yaml\n")
+    top = tmp_path / "top.yaml"
+    top.write_text("condyle: 1\nextends: study/middle.yaml\n")
     assert load_skeleton(top).marker_names == ("ASIS", "thigh_a", "cluster")
 
 
@@ -112,3 +113,31 @@ def test_a_nameless_model_is_called_by_its_file(tmp_path: Path, leg: str) -> Non
     assert load_skeleton(path).name == "kick"
     with pytest.raises(ModelError):
         load_skeleton(str(tmp_path))
+
+
+OUTSIDE = [
+    "../base.yaml", "/etc/passwd", "./../base.yaml", "models/../../base.yaml", "link.yaml",
+]  # fmt: skip
+
+
+@pytest.mark.parametrize("name", OUTSIDE)
+def test_a_base_outside_the_model_s_folder_is_not_read(tmp_path: Path, leg: str, name: str) -> None:
+    (tmp_path / "base.yaml").write_text(leg)
+    folder = tmp_path / "models"
+    folder.mkdir()
+    (folder / "link.yaml").symlink_to(tmp_path / "base.yaml")
+    (folder / "leg.yaml").write_text(f"condyle: 1\nextends: {name}\n")
+    with pytest.raises(ModelError) as told:
+        load_skeleton(folder / "leg.yaml")
+    assert str(told.value) == (
+        f"{folder}/leg.yaml:2: the base model '{name}' is not in the model's folder.\n"
+        "  Put it beside the model, and name it from there."
+    )
+
+
+def test_a_base_below_may_build_on_one_beside_the_outermost(tmp_path: Path, leg: str) -> None:
+    (tmp_path / "below").mkdir()
+    (tmp_path / "base.yaml").write_text(leg)
+    (tmp_path / "below" / "middle.yaml").write_text("condyle: 1\nextends: ../base.yaml\n")
+    (tmp_path / "leg.yaml").write_text("condyle: 1\nextends: below/middle.yaml\n")
+    assert load_skeleton(tmp_path / "leg.yaml").segment_names == ("pelvis", "thigh", "shank")

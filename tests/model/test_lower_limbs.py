@@ -19,16 +19,6 @@ from ruamel.yaml import YAML
 from condyle.model.elementary import coupled
 from condyle.model.growth import sized_numbers
 from condyle.model.kinematics import Kinematics
-from condyle.model.language import (
-    CoordinateEntry,
-    JointEntry,
-    MarkerEntry,
-    ModelEntry,
-    MoveEntry,
-    SegmentEntry,
-    SizingEntry,
-    SizingSegmentEntry,
-)
 from condyle.model.loading import load_skeleton
 from condyle.model.skeleton import Joint, Move, Moves, Polynomial, Segment, Skeleton
 
@@ -365,27 +355,7 @@ def test_label_map_of_the_plates_names_markers_of_its_model() -> None:
     assert all(m.at is None for m in skeleton.markers if m.name in plates)
 
 
-@pytest.mark.parametrize(
-    "entry",
-    [
-        ModelEntry,
-        SegmentEntry,
-        JointEntry,
-        MoveEntry,
-        CoordinateEntry,
-        MarkerEntry,
-        SizingEntry,
-        SizingSegmentEntry,
-    ],
-    ids=lambda entry: str(entry.called),
-)
-def test_manual_tells_every_key(entry: type[ModelEntry]) -> None:
-    manual = (ROOT / "models_yaml" / "README.md").read_text(encoding="utf-8")
-    for name, field in entry.model_fields.items():
-        assert f"`{field.alias or name}`" in manual
-
-
-DOCUMENTS = ("models_yaml/README.md", "docs/lower_limbs.md", "docs/change-a-joint.md")
+DOCUMENTS = ("docs/lower_limbs.md", "docs/change-a-joint.md")
 
 
 def shown_models() -> list[str]:

@@ -5,7 +5,9 @@ from pathlib import Path
 
 import casadi as ca
 import numpy as np
+from ruamel.yaml import YAML
 
+from condyle.model import load_tree
 from condyle.model.growth import sized_numbers
 from condyle.model.kinematics import Kinematics
 from condyle.model.skeleton import Moves, Skeleton, Spherical
@@ -171,3 +173,38 @@ def test_equal_coordinates_on_both_sides_are_mirrored_postures(read: Reader) -> 
         expected = where[f"{name}_right"] * [1, 1, -1]
         np.testing.assert_allclose(where[f"{name}_left"], expected, atol=1e-12)
         assert abs(where[f"{name}_left"]).min() > 0.001
+
+
+def test_mirroring_the_mirrored_side_gives_back_the_first(tmp_path: Path) -> None:
+    """Mirroring twice is the identity: of all that a file can say on one side."""
+    extra = """\
+ties:
+  grip_right: {point: [hand_right, [1, 2, 3]], meets: [trunk, AC_left]}
+  wall_right: {point: [trunk, SN], on_plane: {of: hand_right, through: [1, 2, 3], normal: [1, 2, 3]}}
+  ball_right: {point: [trunk, SN], on_ellipsoid: {of: arm_right, centre: EL_right, radii: [1, 2, 3]}}
+  rod_right: {point: [hand_right, [1, 2, 3]], stays: {distance: 1, from: [trunk, AC_right]}}
+sizes: {arm_right: {factors: [1, 2, 3], sd: [1, 2, 3]}}
+"""
+    full = (
+        (BODY + extra)
+        .replace("axial_right]}}", "axial_right]}, cone: 150, twist: [-100, 70]}\n    placed: [1, 2, 3]")
+        .replace("    at: [0, -0.3, 0.03]\n", "    at: [0, -0.3, 0.03]\n    axis_turn: [1, 2, 3]\n")
+        .replace("  standing:", "  joints: {elbow_right: {place_sd: 0.01, axis_sd: 2}}\n  standing:")
+    )  # fmt: skip
+    (tmp_path / "right.yaml").write_text(full)
+    both = load_tree(tmp_path / "right.yaml")
+    left_only = _without_right(both)
+    assert len(str(left_only)) < 0.7 * len(str(both))
+    with (tmp_path / "left.yaml").open("w") as file:
+        YAML().dump({"condyle": 1, "mirror": {"_left": "_right"}, **left_only}, file)
+    assert load_tree(tmp_path / "left.yaml") == both
+
+
+def _without_right(value: object) -> dict[str, object]:
+    """A tree without its entries whose names end in _right."""
+    assert isinstance(value, dict)
+    return {
+        key: _without_right(child) if isinstance(child, dict) else child
+        for key, child in value.items()
+        if not key.endswith("_right")
+    }

@@ -2,76 +2,86 @@
 
 from __future__ import annotations
 
+import importlib.util
+import re
+import subprocess
+import sys
 import time
 from collections.abc import Callable
 from pathlib import Path
+from types import ModuleType
 
 import numpy as np
+import pytest
 from ruamel.yaml import YAML
 
 from condyle.model import load_skeleton
-from condyle.model.errors import Mistake, ModelError
+from condyle.model.json_schema import model_schema
 
-JUNK = [
-    "null", "true", "3", "-1", "1e400", ".nan", "-.inf", "99999999999999999999", "''", "x", "-z",
-    "laboratory", "upright", "[]", "{}", "[1, 2, 3]", "[[1, 2], [3]]", "{a: {b: {c: 1}}}",
-    "[{rotate: [0, 0, 0]}, 3]", "[null, true]", "hip_flexion", "thigh", "{1: 2}", "'\\'", "&a [*a]",
-    "!!binary abc", "2024-01-01", "0x10", "[1, 2, [3]]", "{segment: {}}", "1e-320", "'[key]'",
-]  # fmt: skip
-FILES = 500
+ROOT = Path(__file__).resolve().parents[2]
+FUZZ = ROOT / "benchmarks" / "fuzz_models.py"
+FILES = 1000
+"""A twentieth of what the benchmark reads."""
 
 
-def changed(text: str, random: np.random.Generator) -> str:
-    """Replace, remove, repeat or exchange pieces of a model's text."""
-    for _ in range(int(random.integers(1, 4))):
-        lines = text.splitlines()
-        at = int(random.integers(len(lines)))
-        junk = str(random.choice(JUNK))
-        head = lines[at].split(":")[0]
-        kind = int(random.integers(6))
-        if kind == 0:
-            lines[at] = f"{head}: {junk}"
-        elif kind == 1:
-            del lines[at]
-        elif kind == 2:
-            lines.insert(at, lines[int(random.integers(len(lines)))])
-        elif kind == 3:
-            words = lines[at].split(" ")
-            words[int(random.integers(len(words)))] = junk
-            lines[at] = " ".join(words)
-        elif kind == 4:
-            where = int(random.integers(len(lines[at]) + 1))
-            lines[at] = (
-                lines[at][:where]
-                + str(random.choice(list("{}[]:,-#&*!'\"x9 ")))
-                + lines[at][where:]
-            )
-        else:
-            other = int(random.integers(len(lines)))
-            lines[at], lines[other] = lines[other], lines[at]
-        text = "\n".join(lines) + "\n"
-    return text
+@pytest.fixture(scope="module")
+def fuzz() -> ModuleType:
+    """The benchmark as a module."""
+    spec = importlib.util.spec_from_file_location("fuzz_models", FUZZ)
+    assert spec is not None
+    assert spec.loader is not None
+    module = importlib.util.module_from_spec(spec)
+    sys.modules["fuzz_models"] = module  # dataclasses look their module up
+    spec.loader.exec_module(module)
+    return module
 
 
-def _mistakes_of(path: Path) -> tuple[Mistake, ...]:
-    try:
-        load_skeleton(path)
-    except ModelError as error:
-        return error.mistakes
-    return ()
-
-
-def test_a_damaged_model_is_a_skeleton_or_a_report(leg: str, tmp_path: Path) -> None:
-    random = np.random.default_rng(20_240_817)
-    mirrored = leg.replace("name: leg", "name: leg\nmirror: {_a: _b, thigh: limb}")
-    path = tmp_path / "leg.yaml"
-    reports = 0
+def test_a_damaged_model_is_a_skeleton_or_a_report() -> None:
     began = time.perf_counter()
-    for number in range(FILES):
-        path.write_text(changed(leg if number % 2 else mirrored, random))
-        reports += len(_mistakes_of(path)) > 0
-    assert FILES / 2 < reports < FILES
-    assert time.perf_counter() - began < 20
+    command = [sys.executable, str(FUZZ), "--files", str(FILES), "--small", "--seed", "2"]
+    told = subprocess.run(command, capture_output=True, text=True, check=False)
+    assert told.returncode == 0, told.stdout + told.stderr
+    counts = re.search(r"(\d+) still sound, (\d+) reports .* (\d+) faults", told.stdout)
+    assert counts, told.stdout
+    sound, reports, faults = map(int, counts.groups())
+    assert (sound + reports, faults) == (FILES, 0)
+    assert min(sound, reports) > FILES / 50
+    assert time.perf_counter() - began < 60  # 10 s where nothing else runs
+
+
+def test_the_sound_files_of_the_benchmark_are_sound(fuzz: ModuleType, tmp_path: Path) -> None:
+    (tmp_path / "bone.stl").write_text("solid")
+    (tmp_path / "other.yaml").write_text("condyle: 1\n")
+    for text in (fuzz.EVERY_KEY, fuzz.SMALLEST):
+        assert fuzz.judge(text.encode(), tmp_path) == (0, None)
+
+
+def test_the_benchmark_s_own_model_uses_every_key(fuzz: ModuleType) -> None:
+    schema = model_schema()
+    keys = {key for one in (schema, *schema["$defs"].values()) for key in one["properties"]}
+    written = set(re.findall(r"(\w+):", fuzz.EVERY_KEY))
+    assert keys - written == {"extends", "reflected"}
+
+
+def test_the_benchmark_sees_what_it_looks_for(
+    fuzz: ModuleType, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """A reader that crashes, hangs, or touches what it should not is found out."""
+
+    def reading(action: Callable[[], object]) -> str | None:
+        monkeypatch.setattr(fuzz, "load_skeleton", lambda _: action())
+        fault: str | None = fuzz.judge(b"condyle: 1", tmp_path)[1]
+        return fault
+
+    monkeypatch.setattr(fuzz, "LONGEST", 1)
+    assert "ZeroDivisionError" in (reading(lambda: 1 / 0) or "")
+    assert reading(lambda: time.sleep(3)) == "more than 1 s"
+    assert "touched" in (reading(lambda: Path("/etc/hosts").read_text()) or "")
+    assert "touched" in (reading(lambda: (tmp_path / "x").write_text("x")) or "")
+    assert "touched" in (reading(lambda: subprocess.run(["true"], check=False)) or "")
+    assert "made a" in (reading(lambda: 3) or "")
+    assert reading(lambda: load_skeleton("lower_limbs")) is None
+    assert reading(lambda: None) is None
 
 
 def test_any_value_may_stand_anywhere(leg: str, report: Callable[..., str], tmp_path: Path) -> None:
