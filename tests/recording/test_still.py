@@ -57,7 +57,7 @@ def test_short_recordings_are_still_as_a_whole(frames: int) -> None:
 
 def test_slow_sway_is_taken_where_there_is_nothing_quieter() -> None:
     time = np.arange(300) / RATE
-    sway = 0.02 * np.sin(2 * np.pi * 0.5 * time)  # peak 0.063 m/s
+    sway = 0.03 * np.sin(2 * np.pi * 0.5 * time)  # peak 0.094 m/s
     places = np.ones((1, 5, 3)) + sway[:, None, None] * np.array([1.0, 0, 0])
     part = still_part(recording(places), start=None, end=None)
     assert part.frames.stop - part.frames.start == 50
