@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import errno
 import os
+import shutil
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
@@ -74,6 +75,35 @@ def whole_file(path: str | Path) -> Iterator[Path]:
         raise cannot_write(path, fault) from fault
     finally:
         _remove(beside)
+
+
+@contextmanager
+def whole_folder(path: str | Path) -> Iterator[Path]:
+    """Give a new folder beside `path` to fill; move its files into `path` when the block ends well.
+
+    Files of the same names are replaced, others that stood in `path` stay. Where the block raises,
+    `path` is as it was before.
+
+    Raises
+    ------
+    CondyleError
+        Where the system refuses the path.
+    """
+    final = Path(os.path.realpath(path))
+    beside = final.with_name(f".{final.name[:80]}-{uuid4().hex[:12]}")
+    try:
+        beside.mkdir(parents=True)
+        yield beside
+        files = sorted(beside.iterdir())
+        for file in files:
+            _force_to_disk(file)
+        final.mkdir(exist_ok=True)
+        for file in files:
+            file.replace(final / file.name)
+    except OSError as fault:
+        raise cannot_write(path, fault) from fault
+    finally:
+        shutil.rmtree(beside, ignore_errors=True)
 
 
 def cannot_write(path: str | Path, fault: OSError) -> CondyleError:

@@ -19,7 +19,7 @@ from numpy.typing import NDArray
 from condyle.model.errors import CondyleError
 from condyle.model.meshes import GrownShape
 from condyle.model.skeleton import Shape, Skeleton, Turn, Vector
-from condyle.model.whole_files import cannot_write, whole_file
+from condyle.model.whole_files import whole_folder
 from condyle.solver.posture import rotations
 from condyle.solver.quality import Finding
 from condyle.solver.results import FittedMotion, TrialFit
@@ -55,36 +55,28 @@ def save_trial(
     CondyleError
         Where the folder cannot be written.
     """
-    try:
-        folder.mkdir(parents=True, exist_ok=True)
-    except OSError as fault:
-        raise cannot_write(folder, fault) from fault
     coordinates = coordinate_table(fit)
-    with whole_file(folder / "coordinates.parquet") as path:
-        coordinates.to_parquet(path, index=False)
     numeric = coordinates.astype(
         {c: np.int8 for c in coordinates.columns if str(c).endswith(".at_limit")}
     )
-    _write_csv(numeric, folder / "coordinates.csv")
-    _write_csv(column_meanings(fit), folder / "columns.csv")
-    with whole_file(folder / "markers.parquet") as path:
-        marker_table(fit).to_parquet(path, index=False)
-    with whole_file(folder / "segments.parquet") as path:
-        segment_table(fit.motion).to_parquet(path, index=False)
-    _write_csv(summary_table(fit), folder / "summary.csv")
-    _write_json(skeleton_geometry(fit.motion, skeleton), folder / "skeleton.json")
-    _write_json(fit_report(fit, skeleton, findings, origin), folder / "fit.json")
+    with whole_folder(folder) as beside:
+        coordinates.to_parquet(beside / "coordinates.parquet", index=False)
+        _write_csv(numeric, beside / "coordinates.csv")
+        _write_csv(column_meanings(fit), beside / "columns.csv")
+        marker_table(fit).to_parquet(beside / "markers.parquet", index=False)
+        segment_table(fit.motion).to_parquet(beside / "segments.parquet", index=False)
+        _write_csv(summary_table(fit), beside / "summary.csv")
+        _write_json(skeleton_geometry(fit.motion, skeleton), beside / "skeleton.json")
+        _write_json(fit_report(fit, skeleton, findings, origin), beside / "fit.json")
 
 
 def _write_csv(table: pd.DataFrame, path: Path) -> None:
-    with whole_file(path) as beside:
-        table.to_csv(beside, index=False, float_format="%.9g")
+    table.to_csv(path, index=False, float_format="%.9g")
 
 
 def _write_json(content: Mapping[str, Any], path: Path) -> None:
-    with whole_file(path) as beside:
-        text = json.dumps(_without_nan(content), indent=1, ensure_ascii=False)
-        beside.write_text(text + "\n", encoding="utf-8")
+    text = json.dumps(_without_nan(content), indent=1, ensure_ascii=False)
+    path.write_text(text + "\n", encoding="utf-8")
 
 
 def _without_nan(value: Any) -> Any:

@@ -342,8 +342,7 @@ def test_a_full_disk_is_said_and_leaves_nothing_half_written(
     assert done.returncode == 2, done.stderr
     assert "cannot be written" in done.stderr
     assert "Traceback" not in done.stderr
-    assert not [path for path in out.rglob("*") if path.is_file() and path.stat().st_size > 20000]
-    assert not [path for path in out.rglob(".*") if path.is_file()]
+    assert not [path for path in out.rglob("*") if path.is_file()]
 
 
 def test_an_interrupt_ends_with_130(study: Path, subject: Path, tmp_path: Path) -> None:

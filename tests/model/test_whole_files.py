@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 
 from condyle.model.errors import CondyleError
-from condyle.model.whole_files import whole_file
+from condyle.model.whole_files import whole_file, whole_folder
 
 
 def test_a_file_appears_when_it_is_whole(tmp_path: Path) -> None:
@@ -67,3 +67,38 @@ def test_a_new_file_may_be_read_by_whom_the_system_lets(tmp_path: Path) -> None:
     with whole_file(tmp_path / "a") as beside:
         beside.write_text("")
     assert (tmp_path / "a").stat().st_mode == (tmp_path / "plain").stat().st_mode
+
+
+def test_a_folder_of_results_appears_whole(tmp_path: Path) -> None:
+    final = tmp_path / "walk"
+    final.mkdir()
+    (final / "old.csv").write_text("kept")
+    (final / "fit.json").write_text("replaced")
+    with whole_folder(final) as beside:
+        (beside / "fit.json").write_text("new")
+        assert (final / "fit.json").read_text() == "replaced"
+    assert (final / "fit.json").read_text() == "new"
+    assert (final / "old.csv").read_text() == "kept"
+    assert [path.name for path in tmp_path.iterdir()] == ["walk"]
+
+
+def test_a_folder_that_cannot_be_filled_leaves_nothing(tmp_path: Path) -> None:
+    def fill() -> None:
+        with whole_folder(tmp_path / "walk") as beside:
+            (beside / "first.csv").write_text("1")
+            raise OSError(errno.ENOSPC, "No space left on device", str(beside / "second.csv"))
+
+    with pytest.raises(CondyleError, match=r"walk: cannot be written.*\n.*disk is full"):
+        fill()
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_an_interrupt_leaves_the_earlier_folder_as_it_was(tmp_path: Path) -> None:
+    def fill() -> None:
+        with whole_folder(tmp_path / "walk") as beside:
+            (beside / "first.csv").write_text("1")
+            raise KeyboardInterrupt
+
+    with pytest.raises(KeyboardInterrupt):
+        fill()
+    assert list(tmp_path.iterdir()) == []
