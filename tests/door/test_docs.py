@@ -59,3 +59,34 @@ def test_every_command_that_readme_shows_exists() -> None:
     known = {command.name or command.callback.__name__ for command in app.registered_commands}
     assert shown
     assert shown <= known
+
+
+def test_the_page_on_your_own_joint_can_be_followed_word_by_word(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    page = (ROOT / "docs/your-own-joint.md").read_text()
+    blocks = re.findall(r"```(\w*)\n(.*?)```", page, flags=re.DOTALL)
+    (model,) = [text for kind, text in blocks if kind == "yaml"]
+    assert model == (ROOT / "docs/examples/own_knee.yaml").read_text()
+    monkeypatch.chdir(tmp_path)
+    copy_study(tmp_path)
+    Path("own_knee.yaml").write_text(model)
+    said = ""
+    for _, text in blocks:
+        for line in text.splitlines():
+            if line.startswith("condyle "):
+                result = CliRunner().invoke(app, line.split()[1:])
+                assert result.exit_code == 0, result.output
+                said += result.stdout
+    # Each line that the page shows is a line that the commands print.
+    shown = [line for kind, text in blocks if not kind for line in text.splitlines()]
+    for line in shown:
+        if line and not line.startswith(("condyle ", "own_knee.yaml:", "  Did you mean")):
+            assert line in said, line
+    Path("own_knee.yaml").write_text(model.replace("follows: knee_flexion", "follows: knee_flexon"))
+    slip = CliRunner().invoke(app, ["check", "own_knee.yaml"])
+    assert "own_knee.yaml:11: no coordinate is called 'knee_flexon_right'." in slip.stderr
+    (program,) = [text for kind, text in blocks if kind == "python"]
+    scope: dict[str, pd.Series] = {}
+    exec(program, scope)  # noqa: S102 - the page's own program
+    assert (scope["table"]["knee_rotation_right"] - scope["paper"]).abs().max() < 1e-6
