@@ -14,6 +14,9 @@ BoolArray = NDArray[np.bool_]
 
 NULL_SHARE = 1e-10
 """Pivots of the unit-diagonal matrix below this are rounding: an sd 100 000 times what one alone has."""
+LEAST_INFORMATION = 1e-12
+"""Information of a freedom, over the largest of its frame, below which it is rounding: moments about the
+laboratory's origin cancel to about 1e-16 of themselves, and a person may stand 10 m from it."""
 PARTICIPATION = 1e-6
 """Squared share of a freedom in the null space above which it counts as undetermined."""
 
@@ -21,12 +24,12 @@ PARTICIPATION = 1e-6
 def _usable(H: FloatArray, free: BoolArray) -> BoolArray:
     """Free freedoms that move anything at all, beyond rounding."""
     diagonal = np.einsum("nii->ni", H)
-    return np.asarray(free & (diagonal > NULL_SHARE**2 * diagonal.max(axis=1, keepdims=True)))
+    return np.asarray(free & (diagonal > LEAST_INFORMATION * diagonal.max(axis=1, keepdims=True)))
 
 
 def _unit_diagonal(H: FloatArray, free: BoolArray) -> tuple[FloatArray, FloatArray]:
     diagonal = np.einsum("nii->ni", H)
-    usable = _usable(H, free)
+    usable = free & (diagonal > 0)
     scale = np.where(usable, 1 / np.sqrt(np.where(usable, diagonal, 1.0)), 0.0)
     unit = H * scale[:, :, None] * scale[:, None, :]
     index = np.arange(H.shape[1])
@@ -48,7 +51,8 @@ def dependent_pivots(H: FloatArray, free: BoolArray) -> BoolArray:
     (frames, n) bool
         Pinning these makes the rest determined.
     """
-    unit, _ = _unit_diagonal(H, free)
+    usable = _usable(H, free)
+    unit, _ = _unit_diagonal(H, usable)
     frames, size = free.shape
     left = np.ones((frames, size))
     remaining = np.ones((frames, size), dtype=bool)
@@ -66,7 +70,7 @@ def dependent_pivots(H: FloatArray, free: BoolArray) -> BoolArray:
         remaining[every[sound], pivot[sound]] = False
         if not sound.any():
             break
-    return np.asarray(free & (remaining | ~_usable(H, free)))
+    return np.asarray(free & (remaining | ~usable))
 
 
 def undetermined(H: FloatArray, free: BoolArray) -> tuple[BoolArray, BoolArray]:
@@ -83,7 +87,7 @@ def undetermined(H: FloatArray, free: BoolArray) -> tuple[BoolArray, BoolArray]:
     involved = pins.copy()
     rows = np.flatnonzero(pins.any(axis=1))
     if len(rows):
-        unit, scale = _unit_diagonal(H[rows], free[rows])
+        unit, scale = _unit_diagonal(H[rows], _usable(H[rows], free[rows]))
         values, vectors = np.linalg.eigh(unit)
         null = values[:, None, :] < NULL_SHARE * 10
         share = (np.where(null, vectors, 0.0) ** 2).sum(axis=2)

@@ -56,10 +56,17 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
         count = f"  [{len(markers)} markers]" if markers else ""
         say(f"{'  ' * (depth + 1)}{segment}  <- {joint} ({kind}){count}")
     rows = [
-        (c.name, c.joint, _number(c.lower, c.unit), _number(c.upper, c.unit), _rest(c), _told(c))
+        (
+            c.name,
+            c.joint,
+            _number(c.lower, c.unit),
+            _number(c.upper, c.unit),
+            _rest(c),
+            _told(c, report),
+        )
         for c in report.coordinates
     ]
-    show_table("", ["coordinate", "joint", "from", "to", "rest", "markers tell it"], rows)
+    show_table("", ["coordinate", "joint", "from", "to", "rest", "sd from markers"], rows)
     for segment, markers in report.markers.items():
         if markers:
             say(f"markers of {segment}: {', '.join(markers)}")
@@ -67,11 +74,15 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
         say(f"without a place until a static gives one: {', '.join(report.without_place)}")
     for remark in report.mesh_remarks:
         say(remark)
+    for first, second, correlation in report.pairs:
+        say(f"hardly told apart: {first} and {second} (correlation {correlation:+.2f})")
     if report.unseen:
         say(
             f"not determined by any marker: {', '.join(report.unseen)} (such a coordinate stays "
             "at rest, and its sd is empty)"
         )
+    for name, segment in report.remedies.items():
+        say(f"  markers on {segment} would tell {name}")
     return DONE
 
 
@@ -85,8 +96,10 @@ def _rest(coordinate: CoordinateReport) -> str:
     )
 
 
-def _told(coordinate: CoordinateReport) -> str:
-    return "yes" if coordinate.seen else "no"
+def _told(coordinate: CoordinateReport, report: ModelReport) -> str:
+    if coordinate.sd is None:
+        return "none" if coordinate.name in report.unseen else ""
+    return f"{coordinate.sd:.2g} deg" if coordinate.unit == "deg" else f"{coordinate.sd:.2g} m"
 
 
 def show_subject(made: SizedSubject, *, as_json: bool) -> int:

@@ -1,7 +1,7 @@
 """A model looked at before any recording: its tree, its coordinates, what its markers can tell.
 
-Observability is judged at postures drawn over the ranges with every marker present: a coordinate is
-called unseen when it takes part in an undetermined combination in all of them.
+What the markers tell is judged in `solver.telling`, with every marker of the model or with those that
+a recording really has.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from condyle.model import load_skeleton
 from condyle.model.growth import sized_marker_at
@@ -24,22 +25,18 @@ from condyle.model.skeleton import (
     Skeleton,
     Spherical,
 )
-from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
-from condyle.solver.observability import undetermined
-from condyle.solver.posture import Posture
-from condyle.solver.trial_fit import frame_problem
-from condyle.solver.upright import Upright
-
-POSTURES = 25
-"""How many postures observability is judged at; degenerate ones are rare and need only one to pass."""
-SHARE_OF_RANGE = 0.8
-UNLIMITED_HALF = 0.5
-"""rad or m to either side of rest, for a coordinate without a range."""
+from condyle.recording import read_label_map, read_recording
+from condyle.recording.recording import is_seen
+from condyle.solver.matching import match_markers
+from condyle.solver.telling import Telling, tell
 
 
 @dataclass(frozen=True, slots=True)
 class CoordinateReport:
-    """One coordinate: unit ``deg`` or ``m``, range and rest in it, and whether markers tell it."""
+    """One coordinate: unit ``deg`` or ``m``; range, rest and the sd that markers give it in that unit.
+
+    ``sd`` is the median over postures, None where no marker tells the coordinate or it is held.
+    """
 
     name: str
     joint: str
@@ -48,7 +45,7 @@ class CoordinateReport:
     upper: float | None
     rest: float
     role: str
-    seen: bool
+    sd: float | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,7 +58,9 @@ class ModelReport:
     coordinates : CoordinateReports
     markers : segment -> marker names
     without_place : markers that only a static can place
-    unseen : coordinates and orientations that the markers cannot tell
+    unseen : coordinates and angles that the markers cannot tell
+    remedies : such a name -> the segment on which markers would tell it
+    pairs : (name, name, correlation) of coordinates that are hardly told apart
     mesh_remarks : what is odd about the model's meshes
     """
 
@@ -74,6 +73,8 @@ class ModelReport:
     markers: dict[str, tuple[str, ...]]
     without_place: tuple[str, ...]
     unseen: tuple[str, ...]
+    remedies: dict[str, str]
+    pairs: tuple[tuple[str, str, float], ...]
     mesh_remarks: tuple[str, ...]
 
     def as_dict(self) -> dict[str, Any]:
@@ -81,23 +82,34 @@ class ModelReport:
         return asdict(self)
 
 
-def check(model: str | Path) -> ModelReport:
-    """Read a model and say what it holds.
+def check(
+    model: str | Path,
+    *,
+    recording: str | Path | None = None,
+    labels: str | Path | None = None,
+) -> ModelReport:
+    """Read a model and say what it holds and what its markers can tell.
+
+    Parameters
+    ----------
+    recording : a file
+        Only the markers that it has at any time count.
+    labels : a file ``{model marker: label in the recording}``
 
     Raises
     ------
-    ModelError
-        With every mistake.
+    CondyleError
+        With every mistake of the model, or what is wrong with the recording.
     """
     skeleton = load_skeleton(model)
-    unseen = unseen_freedoms(skeleton)
+    told = tell(skeleton, present=_present(skeleton, recording, labels))
     return ModelReport(
         name=skeleton.name,
         about=skeleton.about,
         sources=skeleton.sources,
         sized=bool(skeleton.sizes),
         tree=_tree(skeleton),
-        coordinates=tuple(_coordinate(skeleton, c, unseen) for c in skeleton.coordinates),
+        coordinates=tuple(_coordinate(skeleton, c, told) for c in skeleton.coordinates),
         markers={
             segment: tuple(m.name for m in skeleton.markers if m.segment == segment)
             for segment in skeleton.segment_names
@@ -107,7 +119,9 @@ def check(model: str | Path) -> ModelReport:
             for m, place in zip(skeleton.markers, sized_marker_at(skeleton), strict=True)
             if np.isnan(place).any()
         ),
-        unseen=unseen,
+        unseen=told.unseen,
+        remedies=dict(told.remedies),
+        pairs=told.pairs,
         mesh_remarks=tuple(mesh_remarks(grown_shapes(skeleton))),
     )
 
@@ -140,9 +154,18 @@ def kind_of(joint: Joint) -> str:
     return f"{free} free move{'s' * (free != 1)}" + (f", {coupled} coupled" if coupled else "")
 
 
-def _coordinate(
-    skeleton: Skeleton, coordinate: Coordinate, unseen: tuple[str, ...]
-) -> CoordinateReport:
+def _present(
+    skeleton: Skeleton, recording: str | Path | None, labels: str | Path | None
+) -> NDArray[np.bool_] | None:
+    """(markers,) Which markers a recording has; None without one."""
+    if recording is None:
+        return None
+    label_map = read_label_map(Path(labels)) if labels is not None else None
+    matched = match_markers(skeleton, read_recording(Path(recording)), label_map)
+    return np.asarray(is_seen(matched.positions).any(axis=0))
+
+
+def _coordinate(skeleton: Skeleton, coordinate: Coordinate, told: Telling) -> CoordinateReport:
     factor = float(np.degrees(1.0)) if coordinate.unit == "rad" else 1.0
 
     def bound(value: float) -> float | None:
@@ -161,8 +184,15 @@ def _coordinate(
         upper=bound(coordinate.upper),
         rest=round(coordinate.rest * factor, 9),
         role=role,
-        seen=coordinate.name not in unseen,
+        sd=_told_sd(coordinate, told, factor),
     )
+
+
+def _told_sd(coordinate: Coordinate, told: Telling, factor: float) -> float | None:
+    sd = told.sd.get(coordinate.name, float("nan"))
+    if coordinate.held is not None or not np.isfinite(sd):
+        return None
+    return float(sd * factor)
 
 
 def _joint_of(skeleton: Skeleton, coordinate: str) -> str:
@@ -173,43 +203,3 @@ def _joint_of(skeleton: Skeleton, coordinate: str) -> str:
         if isinstance(motion, Moves) and any(m.coordinate == coordinate for m in motion.moves):
             return joint.name
     return ""
-
-
-def unseen_freedoms(skeleton: Skeleton) -> tuple[str, ...]:
-    """Coordinates, and joints whose orientation, no marker of the model can tell."""
-    if not skeleton.markers:
-        return tuple(c.name for c in skeleton.coordinates if c.held is None)
-    functions = SkeletonFunctions(skeleton)
-    rng = np.random.default_rng(0)
-    markers = np.zeros((POSTURES, len(skeleton.markers), 3))
-    problem = frame_problem(skeleton, functions, markers, Upright("+Y", "any"))
-    postures = _postures(problem, rng)
-    bounds = problem.bounds()
-    H, _, _ = problem(postures, np.arange(POSTURES))
-    _, involved = undetermined(H, ~bounds.pinned)
-    never = np.asarray((involved | ~problem.seen()).all(axis=0))
-    freedoms = functions.kinematics.freedoms
-    names = [name for k, name in enumerate(freedoms.scalars) if never[k]]
-    for ball, joint in enumerate(freedoms.balls):
-        if never[freedoms.ball_slice(ball)].any():
-            names.append(f"orientation of {joint}")
-    held = {c.name for c in skeleton.coordinates if c.held is not None}
-    lost = {name for name in names if name not in held}
-    lost |= {c.name for c in skeleton.coordinates if c.follows in lost}
-    return tuple(
-        [c.name for c in skeleton.coordinates if c.name in lost]
-        + [name for name in names if name.startswith("orientation of ")]
-    )
-
-
-def _postures(problem: FrameProblem, rng: np.random.Generator) -> Posture:
-    rest, bounds = problem.rest(), problem.bounds()
-    limited = np.isfinite(bounds.lower) & np.isfinite(bounds.upper)
-    low = np.where(limited, bounds.lower, rest.scalars - UNLIMITED_HALF)
-    high = np.where(limited, bounds.upper, rest.scalars + UNLIMITED_HALF)
-    middle, half = (low + high) / 2, (high - low) / 2
-    scalars = middle + SHARE_OF_RANGE * half * rng.uniform(-1, 1, middle.shape)
-    balls = rest.quaternions.shape[1]
-    turn = np.zeros((len(problem), scalars.shape[1] + 3 * balls))
-    turn[:, scalars.shape[1] :] = rng.uniform(-0.5, 0.5, (len(problem), 3 * balls))
-    return Posture(scalars, rest.quaternions).after(turn)

@@ -92,13 +92,18 @@ def demo(
 @guarded
 def check(
     model: Annotated[str, typer.Argument(help="A shipped model's name, or a file.")],
+    recording: Annotated[
+        Path | None,
+        typer.Option("--recording", help="Judge only the markers that this file has."),
+    ] = None,
+    labels: Labels = None,
     json: Json = False,
 ) -> int:
-    """Read a MODEL: its tree, coordinates, markers and what they cannot tell, or every mistake."""
+    """Read a MODEL: its tree, coordinates, markers and what they can tell, or every mistake."""
     from condyle.answers import show_model
     from condyle.checking import check as run
 
-    return show_model(run(model), as_json=json)
+    return show_model(run(model, recording=recording, labels=labels), as_json=json)
 
 
 @app.command(epilog="Example: condyle recording walk.c3d")
