@@ -53,6 +53,9 @@ GAPS: Mapping[str, tuple[Hidden, ...]] = {
         Hidden("ASIS_right", 3.20, 33),
         Hidden("TT_left", 3.10, 100),  # a rung, for a whole second
         Hidden("LM_left", 4.20, 12),
+        Hidden("EM_left", 1.35, 18),  # against the trunk
+        Hidden("C7", 2.60, 26),  # hair, the head thrown back
+        Hidden("MC5_right", 3.30, 15),  # the ladder
     ),
     "reach_aside": (
         Hidden("ASIS_right", 0.75, 36),  # bent over
@@ -61,6 +64,9 @@ GAPS: Mapping[str, tuple[Hidden, ...]] = {
         Hidden("MT5_right", 2.05, 8),
         Hidden("FH_left", 2.40, 25),
         Hidden("thigh_left", 3.30, 19),
+        Hidden("EM_right", 0.95, 20),  # against the knee
+        Hidden("IJ", 0.85, 24),  # the chin
+        Hidden("US_right", 2.20, 16),  # leaves
     ),
 }
 """What each trial does not show."""

@@ -1,6 +1,6 @@
 """The invented person: nobody's body, but one that the model's own expectations allow.
 
-Decided here: how this body departs from `lower_limbs`. Sizes are drawn from the model's prior.
+Decided here: how this body departs from `full_body`. Sizes are drawn from the model's prior.
 Hips and knees depart in ways that sizing cannot follow (a hip beside its nominal place, a knee axis
 a little askew), so that the demo's errors contain what a real person's would.
 """
@@ -19,7 +19,7 @@ from condyle.model.skeleton import Joint, Move, Moves, Person, Size, Skeleton, V
 
 FloatArray = NDArray[np.float64]
 
-MODEL = "lower_limbs"
+MODEL = "full_body"
 """The shipped model that this person is built from."""
 
 SEED = 1

@@ -1,8 +1,8 @@
 """From a plan to joint coordinates: the pelvis travels, the feet stay where they were put.
 
-A leg of `lower_limbs` has six freedoms and a foot's pose takes six, so the legs follow from pelvis
-and feet without anything being chosen: Newton's method on foot poses, all frames at once. No marker
-and nothing of the fit is involved.
+A leg has six freedoms and a foot's pose takes six, so the legs follow from pelvis and feet without
+anything being chosen: Newton's method on foot poses, all frames at once. What is above the pelvis
+is told by `upper_body`. No marker and nothing of the fit is involved.
 """
 
 from __future__ import annotations
@@ -16,6 +16,7 @@ from scipy.spatial.transform import Rotation
 
 from condyle.demo_data.foot_tracks import FootTrack
 from condyle.demo_data.movements import RATE, Plan
+from condyle.demo_data.upper_body import angle, shoulder
 from condyle.model.growth import size_factors, sized_lengths, sized_numbers
 from condyle.model.kinematics import Kinematics
 from condyle.model.skeleton import Skeleton
@@ -40,6 +41,9 @@ STARTING_POSTURE = {"hip_flexion": 0.5, "knee_flexion": 0.8, "ankle_dorsiflexion
 
 LONGEST_STEP, TOLERANCE, MOST_STEPS = 0.2, 1e-12, 60
 """rad; m; Newton steps. A leg far from singular takes about ten."""
+
+LEG = ("hip_", "knee_", "ankle_", "subtalar_")
+"""How the names of the coordinates begin that follow from pelvis and feet."""
 
 PROBE = 0.1
 """m; the poses of feet are compared at three points this far along their axes."""
@@ -80,7 +84,17 @@ def posture_of(plan: Plan, skeleton: Skeleton) -> Posture:
         # the toes stay on the ground while the heel rises
         toes = names.index(f"toes_extension_{side}")
         scalars[:, toes] = np.maximum(track.pitch, 0.0)
-    quaternions = quaternions_of(room_from_person * pelvis.orientation)[:, None]
+    time = np.arange(len(scalars)) / RATE
+    for k, name in enumerate(names):
+        if not name.startswith(("pelvis_", "toes_", *LEG)):
+            scalars[:, k] = angle(plan.name, name, time)
+    balls = {
+        "root": room_from_person * pelvis.orientation,
+        **{f"shoulder_{side}": shoulder(plan.name, side, time) for side in ("right", "left")},
+    }
+    quaternions = np.stack(
+        [quaternions_of(balls[name]) for name in kinematics.freedoms.balls], axis=1
+    )
     targets = np.concatenate(
         [foot_targets(track, skeleton, room_from_person) for track in (plan.right, plan.left)],
         axis=1,
@@ -154,7 +168,7 @@ def foot_targets(track: FootTrack, skeleton: Skeleton, room_from_person: Rotatio
 def reached(kinematics: Kinematics, start: Posture, targets: FloatArray) -> Posture:
     """The posture in which both feet are at their targets."""
     names = kinematics.freedoms.scalars
-    legs = [i for i, n in enumerate(names) if not n.startswith(("pelvis", "toes"))]
+    legs = [i for i, n in enumerate(names) if n.startswith(LEG)]
     probes = probe_function(kinematics, legs)
     numbers = sized_numbers(kinematics.skeleton, UPRIGHT.laboratory_from_upright)
     scalars, quaternions = start.scalars.copy(), start.quaternions.reshape(len(start), -1)

@@ -22,16 +22,36 @@ from condyle.model.skeleton import Skeleton
 
 FloatArray = NDArray[np.float64]
 
-AMPLITUDES = {"pelvis": 0.005, "thigh": 0.013, "shank": 0.007, "foot": 0.002}
+AMPLITUDES = {
+    "pelvis": 0.005,
+    "thigh": 0.013,
+    "shank": 0.007,
+    "foot": 0.002,
+    "thorax": 0.005,
+    "head": 0.001,
+    "clavicle": 0.010,
+    "upper_arm": 0.010,
+    "ulna": 0.003,
+    "forearm": 0.003,
+    "hand": 0.002,
+}
 """m at right angles. Peters 2010 reviews up to 30 mm and more for the thigh, 15 mm for the shank, a
 few mm for the foot (from memory, loose bound); Fiorentino et al. 2017 measured 3 to 54 mm over
-pelvis and thigh. A moderate, lean person."""
+pelvis and thigh. Trunk and arms by our own judgement: shoulder and upper arm most. A moderate, lean
+person."""
 
 BESIDE = {
     "pelvis": ("hip_flexion_right", "hip_flexion_left"),
     "thigh": ("hip_flexion", "knee_flexion"),
     "shank": ("knee_flexion", "ankle_dorsiflexion"),
     "foot": ("ankle_dorsiflexion", "subtalar_inversion"),
+    "thorax": ("shoulder_elevation_right", "shoulder_elevation_left"),
+    "head": ("neck_flexion", "neck_twist"),
+    "clavicle": ("shoulder_elevation", "clavicle_elevation"),
+    "upper_arm": ("shoulder_elevation", "elbow_flexion"),
+    "ulna": ("elbow_flexion", "forearm_pronation"),
+    "forearm": ("elbow_flexion", "forearm_pronation"),
+    "hand": ("forearm_pronation", "wrist_flexion"),
 }
 """The angles that a segment's skin follows; a limb's are those of its own side."""
 
@@ -49,11 +69,19 @@ def skin_displacements(
     directions = skin_directions(skeleton)
     moved = []
     for i, marker in enumerate(skeleton.markers):
-        kind, _, side = marker.segment.partition("_")
-        names = [name if kind == "pelvis" else f"{name}_{side}" for name in BESIDE[kind]]
+        kind, side = without_side(marker.segment)
+        names = [f"{name}_{side}" if side else name for name in BESIDE[kind]]
         bent = np.column_stack([np.sin(told[name] - static[name].mean()) for name in names])
         moved.append(AMPLITUDES[kind] / np.sqrt(2) * bent @ directions[i])
     return np.stack(moved, axis=1)
+
+
+def without_side(segment: str) -> tuple[str, str]:
+    """Kind of segment, and its side if it has one."""
+    for side in ("right", "left"):
+        if segment.endswith(f"_{side}"):
+            return segment.removesuffix(f"_{side}"), side
+    return segment, ""
 
 
 def skin_directions(skeleton: Skeleton) -> FloatArray:

@@ -8,7 +8,7 @@ from pathlib import Path
 
 from condyle.model.whole_files import cannot_write, whole_file
 
-MODEL = "lower_limbs"
+MODEL = "full_body"
 """The shipped model that the study is for."""
 
 STATIC = "static"

@@ -260,6 +260,7 @@ def _marker(name: str, entry: MarkerEntry, model: ModelEntry) -> Marker:
         landmark=landmark,
         placed_within=within,
         sd=entry.sd,
+        about=entry.about or "",
         placed=entry.placed,
         placed_sd=entry.placed_sd,
     )

@@ -18,6 +18,7 @@ from condyle.model.skeleton import Regression
 from condyle.model.value_kinds import (
     Axis,
     AxisLetter,
+    Line,
     Name,
     Number,
     Place,
@@ -91,6 +92,9 @@ class MarkerEntry(Vocabulary):
     at: Place | None = Field(None, description="three numbers, or a landmark of the segment")
     placed_within: Positive | None = Field(None, description="a positive number of metres")
     sd: Positive = Field(0.006, description="a positive number of metres")
+    about: Line | None = Field(
+        None, description="the place on the body in plain words, one line of at most 200 letters"
+    )
     placed: Point | None = Field(None, description="three numbers, in metres")
     placed_sd: Spread | None = Field(
         None, description="three numbers that are not negative, in metres"

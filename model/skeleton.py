@@ -256,6 +256,8 @@ class Marker:
         m per axis: how far the real one may sit from `at`; the whole expected error of a frame.
     placed, placed_sd : Vector or None
         m in the *sized* segment, as calibration found it; wins over `at` and does not grow.
+    about : str
+        The place on the body in plain words, for the person who places it; may be empty.
     """
 
     name: str
@@ -266,6 +268,7 @@ class Marker:
     sd: float = 0.006
     placed: Vector | None = None
     placed_sd: Vector | None = None
+    about: str = ""
 
 
 @dataclass(frozen=True, slots=True)

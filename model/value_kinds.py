@@ -29,6 +29,9 @@ LARGEST_NUMBER = 1e9
 LONGEST_NAME = 200
 """Characters; reports and tables repeat names."""
 
+LONGEST_LINE = 200
+"""Characters of a text in one line; sheets on paper repeat it."""
+
 AXES = {
     "x": (1.0, 0.0, 0.0),
     "y": (0.0, 1.0, 0.0),
@@ -109,6 +112,7 @@ NotNegative: TypeAlias = Annotated[
 HalfTurn: TypeAlias = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=-180.0, le=180.0)]
 Name: TypeAlias = Annotated[str, Field(strict=True, pattern=_NAME.pattern, max_length=LONGEST_NAME)]
 Text: TypeAlias = Annotated[str, Field(strict=True)]
+Line: TypeAlias = Annotated[str, Field(strict=True, pattern=_NAME.pattern, max_length=LONGEST_LINE)]
 Axis: TypeAlias = Annotated[
     Vector,
     PlainValidator(_as_axis),

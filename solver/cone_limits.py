@@ -90,14 +90,12 @@ def excesses(ball: LimitedBall, posture: Posture) -> tuple[FloatArray, FloatArra
     return over, np.where(over[..., None] != 0, rates, 0.0)
 
 
-def add_limits(
-    ball: LimitedBall, posture: Posture, here: slice, H: FloatArray, g: FloatArray, cost: FloatArray
-) -> None:
-    """Add a ball's one-sided residuals to the normal equations of each frame."""
+def limit_terms(ball: LimitedBall, posture: Posture) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """What a ball's one-sided residuals add to H (frames, 3, 3), g (frames, 3) and cost (frames,)."""
     over, rates = excesses(ball, posture)
-    H[:, here, here] += np.einsum("nki,nkj->nij", rates, rates) / STIFFNESS_SD**2
-    g[:, here] -= np.einsum("nki,nk->ni", rates, over) / STIFFNESS_SD**2
-    cost += (over**2).sum(axis=1) / (2 * STIFFNESS_SD**2)
+    H = np.einsum("nki,nkj->nij", rates, rates) / STIFFNESS_SD**2
+    g = -np.einsum("nki,nk->ni", rates, over) / STIFFNESS_SD**2
+    return H, g, (over**2).sum(axis=1) / (2 * STIFFNESS_SD**2)
 
 
 def at_limit(ball: LimitedBall, posture: Posture) -> BoolArray:

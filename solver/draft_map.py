@@ -104,9 +104,11 @@ def draft_label_map(
     }
     best: tuple[float, NDArray[np.int64], FloatArray] | None = None
     for heading in np.arange(HEADINGS) * 360 / HEADINGS:
-        found = _laid(model, seen, heading, fixed)
-        if best is None or found[0] < best[0]:
-            best = found
+        turned = model @ Rotation.from_euler("y", heading, degrees=True).as_matrix().T
+        for start in (_filling(turned, seen), _standing_among(turned, seen)):
+            found = _laid(model, start, seen, fixed)
+            if best is None or found[0] < best[0]:
+                best = found
     if best is None:
         return dict(known)
     _, pairs, distance = best
@@ -117,15 +119,26 @@ def draft_label_map(
     return guesses
 
 
-def _laid(
-    model: FloatArray, seen: FloatArray, heading: float, fixed: Mapping[int, int]
-) -> tuple[float, NDArray[np.int64], FloatArray]:
-    """Mean distance, the paired point of each marker (-1 none), and their distances."""
-    turn = Rotation.from_euler("y", heading, degrees=True).as_matrix()
+def _filling(model: FloatArray, seen: FloatArray) -> FloatArray:
+    """The model as tall as all points together: they are a person's whole set."""
     scale = _human(float(np.ptp(seen[:, 1])) / max(float(np.ptp(model[:, 1])), 1e-6))
     middle_of_model = (model.max(axis=0) + model.min(axis=0)) / 2
-    middle_of_seen = (seen.max(axis=0) + seen.min(axis=0)) / 2
-    laid = scale * (model - middle_of_model) @ turn.T + middle_of_seen
+    return np.asarray(scale * (model - middle_of_model) + (seen.max(axis=0) + seen.min(axis=0)) / 2)
+
+
+def _standing_among(model: FloatArray, seen: FloatArray) -> FloatArray:
+    """The model in its own size on the lowest point: a part of the person, others above it."""
+    height = float(np.ptp(model[:, 1]))
+    low = seen[seen[:, 1] <= seen[:, 1].min() + height]
+    centre, middle = low.mean(axis=0), model.mean(axis=0)
+    up = seen[:, 1].min() - model[:, 1].min()
+    return np.add(model, [centre[0] - middle[0], up, centre[2] - middle[2]])
+
+
+def _laid(
+    model: FloatArray, laid: FloatArray, seen: FloatArray, fixed: Mapping[int, int]
+) -> tuple[float, NDArray[np.int64], FloatArray]:
+    """Mean distance, the paired point of each marker (-1 none), and their distances."""
     pairs = np.full(len(model), -1)
     for _ in range(MOST_ROUNDS):
         new = _paired(laid, seen, fixed)

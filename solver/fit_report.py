@@ -60,10 +60,32 @@ def fit_report(
             for i, column in enumerate(fit.columns)
             if fit.at_limit[:, i].any()
         },
+        "smoothing": _smoothing(fit),
         "freedoms": {"without_ties": fit.freedoms, "taken_by_ties": fit.freedoms_tied},
         "ties": {name: {"largest_error": error} for name, error in fit.tie_errors.items()},
         "coordinates_not_observed": dict(fit.not_observed),
         "warnings": [{"what": f.what, "do": f.do, "needs_a_look": f.needs_look} for f in findings],
+    }
+
+
+def _smoothing(fit: TrialFit) -> dict[str, Any] | None:
+    """How the trial was estimated as a whole, and which part of each sd dominates."""
+    smoothing = fit.smoothing
+    if smoothing is None:
+        return None
+    return {
+        "order": smoothing.order,
+        "white_noise": smoothing.white_noise,
+        "rounds": smoothing.rounds,
+        "frames_bridged": dict(smoothing.bridged),
+        "uncertainty": {
+            name: {
+                "white_share": share,
+                "dominated_by": "white noise" if share > 0.5 else "what persists (skin, places)",
+            }
+            for name, share in smoothing.white_share.items()
+            if np.isfinite(share)
+        },
     }
 
 

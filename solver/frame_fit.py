@@ -17,9 +17,14 @@ from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Bounds, Solution, minimise
 from condyle.solver.observability import covariance, undetermined
 from condyle.solver.posture import Posture
+from condyle.solver.robust_loss import Loss
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
+
+
+STAGE_TOLERANCE, STAGE_ROUNDS = 1e-3, 6
+"""For the stages on the way to a robust loss, whose own minima nobody asks for."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -58,19 +63,23 @@ def fit_frames(
     Parameters
     ----------
     problem : FrameProblem
+        With a loss, the fit by least squares is where the robust one starts.
     seed : int
         Of the random restarts.
     watch : callable, optional
         Told the share of the work done.
     """
     bounds = problem.bounds()
-    solution = fit_cold(problem, bounds, seed=seed, watch=watch)
     rows = np.arange(len(problem))
+    solution = fit_cold(problem.with_loss(None), bounds, seed=seed, watch=watch)
+    if problem.loss is not None:
+        solution = _made_robust(problem, problem.loss, solution)
     H = problem.information(solution.posture, rows)
     pins, involved = undetermined(H, ~bounds.pinned)
     if pins.any():
         solution = _settled(problem, solution, pins)
-        H = problem.information(solution.posture, rows)
+        again = np.flatnonzero(pins.any(axis=1))
+        H[again] = problem.information(solution.posture.take(again), again)
     unseen = ~problem.seen()
     free = ~solution.bounds.pinned
     count = solution.posture.scalars.shape[1]
@@ -86,6 +95,27 @@ def fit_frames(
         (involved | unseen) & ~problem.functions.held,
         at_limit,
     )
+
+
+def _made_robust(problem: FrameProblem, loss: Loss, solution: Solution) -> Solution:
+    """From the least-squares fit to the loss's own minimum, stage by stage."""
+    rows = np.arange(len(problem))
+    largest = float(problem.squared_errors(solution.posture, rows).max(initial=0.0))
+    rounds = solution.iterations
+    *early, last = loss.stages(largest)
+    for stage in early:
+        staged = problem.with_loss(stage)
+        solution = minimise(
+            staged,
+            solution.posture,
+            solution.bounds,
+            tolerance=STAGE_TOLERANCE,
+            most_rounds=STAGE_ROUNDS,
+        )
+        rounds = rounds + solution.iterations
+    solution = minimise(problem.with_loss(last), solution.posture, solution.bounds)
+    rounds = rounds + solution.iterations
+    return replace(solution, iterations=rounds)
 
 
 def _settled(problem: FrameProblem, solution: Solution, pins: BoolArray) -> Solution:

@@ -14,15 +14,18 @@ from numpy.typing import NDArray
 
 from condyle.model.kinematics import Kinematics
 from condyle.model.skeleton import LABORATORY, Coordinate, Skeleton
-from condyle.solver.cone_limits import add_limits, limited_balls
+from condyle.solver.compiled_step import CompiledStep, joined_pairs, stepper_of
+from condyle.solver.cone_limits import limit_terms, limited_balls
+from condyle.solver.damped_step import Stepper, diagonal
 from condyle.solver.least_squares import Bounds
 from condyle.solver.normal_equations import NormalEquations
-from condyle.solver.over_frames import FrameFunction, Replay
+from condyle.solver.over_frames import FrameFunction, over_frames
 from condyle.solver.posture import (
     Posture,
     upright_posture,
 )
-from condyle.solver.rest_pulls import add_ball_pull, pulled_balls
+from condyle.solver.rest_pulls import pulled_balls
+from condyle.solver.robust_loss import Loss
 from condyle.solver.tie_equations import TieEquations
 
 FloatArray = NDArray[np.float64]
@@ -42,17 +45,20 @@ class SkeletonFunctions:
     pulled_balls : spherical joints with a pull to rest
     moves_marker : (freedoms, markers) bool
         Whether a freedom moves a marker at all.
+    stepper : Stepper
+        What finds the steps of a fit, in the backend in use.
     """
 
     def __init__(self, skeleton: Skeleton) -> None:
         self.skeleton = skeleton
         self.kinematics = Kinematics(skeleton)
-        self.normal_equations = NormalEquations(self.kinematics)
         self.ties = TieEquations(self.kinematics)
+        also = joined_pairs(self.kinematics.freedoms, self.ties)
+        self.normal_equations = NormalEquations(self.kinematics, also)
         self.limited_balls = limited_balls(self.kinematics)
         self.pulled_balls = pulled_balls(self.kinematics)
         inputs = [self.kinematics.scalars, self.kinematics.quaternions, self.kinematics.numbers]
-        self._markers: FrameFunction = Replay(
+        self._markers: FrameFunction = over_frames(
             ca.Function("markers", inputs, [ca.densify(self.kinematics.marker_positions)])
         )
         poses = [
@@ -61,10 +67,11 @@ class SkeletonFunctions:
                 self.kinematics.rotations, self.kinematics.origins, strict=True
             )
         ]
-        self._poses: FrameFunction = Replay(
+        self._poses: FrameFunction = over_frames(
             ca.Function("poses", inputs, [ca.densify(ca.vertcat(*poses))])
         )
         self.moves_marker = self._moves_marker()
+        self.stepper: Stepper = stepper_of(self.normal_equations.pattern)
 
     @property
     def held(self) -> BoolArray:
@@ -120,6 +127,10 @@ class FrameProblem:
         Of the sized skeleton, laid out as kinematics takes them.
     tie_softness : float
         m; what is added to every tie's sd, in quadrature, while a fit is still far away.
+    pull_share : (freedoms,) or None
+        What the pulls to rest weigh, relative to one measurement of `rest_sd` a frame.
+    loss : Loss or None
+        In place of the markers' squares.
     """
 
     functions: SkeletonFunctions
@@ -127,53 +138,129 @@ class FrameProblem:
     weights: FloatArray
     numbers: FloatArray
     tie_softness: float = 0.0
+    pull_share: FloatArray | None = None
+    loss: Loss | None = None
 
     def __len__(self) -> int:
         return len(self.measured)
+
+    @property
+    def stepper(self) -> Stepper:
+        """What finds its steps; see `least_squares.Structured`."""
+        return self.functions.stepper
 
     def __call__(
         self, posture: Posture, rows: IntArray
     ) -> tuple[FloatArray, FloatArray, FloatArray]:
         """H, g and cost of some frames at a posture; see `least_squares.Problem`."""
-        H, g, cost = self._soft(posture, rows)
-        for ball in self.functions.limited_balls:
-            here = self.functions.kinematics.freedoms.ball_slice(ball.ball)
-            add_limits(ball, posture, here, H, g, cost)
-        return H, g, cost
+        H, g, cost = self._packed(posture, rows)
+        return self.functions.normal_equations.pattern.dense(H), g, cost
 
     def curvature(self, posture: Posture, rows: IntArray) -> FloatArray:
         """What H lacks of the second derivative: that of the markers; ties and pulls bend little."""
-        return self.functions.normal_equations.curvature(
+        return self.functions.normal_equations.pattern.dense(self._bend(posture, rows))
+
+    def for_stepper(
+        self, posture: Posture, rows: IntArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """H, g and cost, H as `stepper` takes it: packed for the compiled one."""
+        packed = isinstance(self.stepper, CompiledStep)
+        return self._packed(posture, rows) if packed else self(posture, rows)
+
+    def bend_for_stepper(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """The curvature as `stepper` takes it."""
+        packed = isinstance(self.stepper, CompiledStep)
+        return self._bend(posture, rows) if packed else self.curvature(posture, rows)
+
+    def diagonal(self, H: FloatArray) -> FloatArray:
+        """(frames, freedoms) Diagonals of matrices in the form that `stepper` takes."""
+        if H.ndim == 3:
+            return diagonal(H)
+        return np.asarray(H[:, np.diag(self.functions.normal_equations.pattern.position)])
+
+    def _packed(
+        self, posture: Posture, rows: IntArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Everything, H packed."""
+        H, g, cost = self._soft(posture, rows)
+        for ball in self.functions.limited_balls:
+            self._add_ball(ball.ball, limit_terms(ball, posture), H, g, cost)
+        return H, g, cost
+
+    def _bend(self, posture: Posture, rows: IntArray) -> FloatArray:
+        return self.functions.normal_equations.packed_curvature(
             posture.scalars,
             posture.quaternions,
             self.measured[rows],
-            self.weights[rows],
+            self._squared_and_weights(posture, rows)[1],
             self.numbers,
         )
 
     def information(self, posture: Posture, rows: IntArray) -> FloatArray:
         """(frames, freedoms, freedoms) J'WJ + prior, whatever limit is reached."""
-        return self._soft(posture, rows)[0]
+        return self.functions.normal_equations.pattern.dense(self._soft(posture, rows)[0])
 
     def _soft(self, posture: Posture, rows: IntArray) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Everything but the limits."""
-        H, g, cost = self.functions.normal_equations(
+        """Everything but the limits, H packed."""
+        squared, weights = self._squared_and_weights(posture, rows)
+        H, g, cost = self.functions.normal_equations.packed(
             posture.scalars,
             posture.quaternions,
             self.measured[rows],
-            self.weights[rows],
+            weights,
             self.numbers,
         )
+        if self.loss is not None:
+            share = self.loss.weight(squared)
+            cost += (self.loss.value(squared) - share * squared).sum(axis=1) / 2
         self._add_ties(posture, H, g, cost)
         self._add_scalar_pulls(posture, H, g, cost)
-        for pulled in self.functions.pulled_balls:
-            here = self.functions.kinematics.freedoms.ball_slice(pulled[0])
-            add_ball_pull(pulled, posture, here, H, g, cost)
+        for pull in self.functions.pulled_balls:
+            here = self.functions.kinematics.freedoms.ball_slice(pull.ball)
+            weight = 1.0 if self.pull_share is None else float(self.pull_share[here].mean())
+            self._add_ball(pull.ball, pull.terms(posture, share=weight), H, g, cost)
         return H, g, cost
+
+    def _add_ball(
+        self,
+        ball: int,
+        terms: tuple[FloatArray, FloatArray, FloatArray],
+        H: FloatArray,
+        g: FloatArray,
+        cost: FloatArray,
+    ) -> None:
+        here = self.functions.kinematics.freedoms.ball_slice(ball)
+        freedoms = np.arange(here.start, here.stop)
+        self.functions.normal_equations.pattern.add(H, freedoms, terms[0])
+        g[:, here] += terms[1]
+        cost += terms[2]
+
+    def _squared_and_weights(
+        self, posture: Posture, rows: IntArray
+    ) -> tuple[FloatArray, FloatArray]:
+        """(frames, markers) e^2, empty without a loss, and what each marker weighs in the equations."""
+        weights = self.weights[rows]
+        if self.loss is None:
+            return np.zeros((len(rows), 0)), weights
+        squared = self.squared_errors(posture, rows)
+        return squared, weights * self.loss.weight(squared)
+
+    def squared_errors(self, posture: Posture, rows: IntArray) -> FloatArray:
+        """(frames, markers) e^2, the squared distance over the squared sd; 0 where missing."""
+        away = self.measured[rows] - self.functions.marker_positions(posture, self.numbers)
+        return np.asarray(self.weights[rows] * (away**2).sum(axis=2))
+
+    def with_loss(self, loss: Loss | None) -> FrameProblem:
+        """The same problem with another loss."""
+        return replace(self, loss=loss)
 
     def with_weights(self, weights: FloatArray) -> FrameProblem:
         """The same problem, markers weighing otherwise."""
         return replace(self, weights=weights)
+
+    def with_pull_share(self, share: FloatArray) -> FrameProblem:
+        """The same problem, its pulls to rest weighing (freedoms,) times as much."""
+        return replace(self, pull_share=share)
 
     def with_tie_softness(self, softness: float) -> FrameProblem:
         """The same problem, its ties held less tightly."""
@@ -200,9 +287,13 @@ class FrameProblem:
 
     def seen(self) -> BoolArray:
         """(frames, freedoms) Whether a weighing marker or a tie moves with a freedom, or a pull holds it."""
-        moves = self.functions.moves_marker
-        seen = (self.weights > 0).astype(float) @ moves.T.astype(float) > 0
-        return np.asarray(seen | (self.pulled() | self.functions.ties.moved_by)[None, :])
+        return np.asarray(self.shown() | self.pulled()[None, :])
+
+    def shown(self) -> BoolArray:
+        """(frames, freedoms) Whether a weighing marker or a tie moves with a freedom."""
+        # A product of truth values; of numbers, it would wake the threads of BLAS for nothing.
+        shown = (self.weights > 0) @ self.functions.moves_marker.T
+        return np.asarray(shown | self.functions.ties.moved_by[None, :])
 
     def pulled(self) -> BoolArray:
         """(freedoms,) Which freedoms have a `rest_sd`."""
@@ -210,8 +301,8 @@ class FrameProblem:
         pulled = np.zeros(freedoms.size, dtype=bool)
         for k, coordinate in enumerate(self._free_coordinates()):
             pulled[k] = coordinate.rest_sd is not None
-        for ball, _ in self.functions.pulled_balls:
-            pulled[freedoms.ball_slice(ball)] = True
+        for pull in self.functions.pulled_balls:
+            pulled[freedoms.ball_slice(pull.ball)] = True
         return pulled
 
     def _free_coordinates(self) -> list[Coordinate]:
@@ -224,17 +315,22 @@ class FrameProblem:
         residual, J = ties.residuals(posture, self.numbers)
         sd = np.hypot(ties.sd, self.tie_softness)
         residual, J = residual / sd, J / sd[:, None]
-        H += np.swapaxes(J, 1, 2) @ J
+        moved = np.flatnonzero(ties.moved_by)
+        own = J[:, :, moved]
+        self.functions.normal_equations.pattern.add(H, moved, np.swapaxes(own, 1, 2) @ own)
         g -= np.einsum("nri,nr->ni", J, residual)
         cost += (residual**2).sum(axis=1) / 2
 
     def _add_scalar_pulls(
         self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray
     ) -> None:
+        position = self.functions.normal_equations.pattern.position
         for k, coordinate in enumerate(self._free_coordinates()):
             if coordinate.rest_sd is None:
                 continue
-            departure = (coordinate.rest - posture.scalars[:, k]) / coordinate.rest_sd
-            H[:, k, k] += coordinate.rest_sd**-2
-            g[:, k] += departure / coordinate.rest_sd
+            share = 1.0 if self.pull_share is None else float(self.pull_share[k])
+            sd = coordinate.rest_sd / np.sqrt(share)
+            departure = (coordinate.rest - posture.scalars[:, k]) / sd
+            H[:, position[k, k]] += sd**-2
+            g[:, k] += departure / sd
             cost += departure**2 / 2

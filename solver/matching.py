@@ -12,6 +12,7 @@ from condyle.model.errors import FitError
 from condyle.model.growth import sized_numbers
 from condyle.model.skeleton import LABORATORY, Floating, Skeleton
 from condyle.recording.labels import match_labels
+from condyle.recording.precision import measurement_variance
 from condyle.recording.recording import Recording, is_seen
 from condyle.solver.cold_start import marker_depths
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
@@ -36,6 +37,8 @@ class MatchedMarkers:
     without_label : model markers that the recording does not have
     other_labels : labels that the model does not know
     other_positions : (frames, other labels, 3) m
+    variance : (frames, markers) m^2
+        Of the cameras' measurement per axis, 0 where the file says nothing of it.
     """
 
     positions: FloatArray
@@ -43,6 +46,7 @@ class MatchedMarkers:
     without_label: tuple[str, ...]
     other_labels: tuple[str, ...]
     other_positions: FloatArray
+    variance: FloatArray
 
 
 def match_markers(
@@ -64,11 +68,14 @@ def match_markers(
     names = skeleton.marker_names
     match = match_labels(names, recording.labels, chosen)
     positions = np.full((len(recording), len(names), 3), np.nan)
+    variance = np.zeros(positions.shape[:2])
+    measured = measurement_variance(recording.residuals, recording.cameras)
     found = {}
     for i, name in enumerate(names):
         column = match.columns[name]
         if column is not None:
             positions[:, i] = recording.positions[:, column]
+            variance[:, i] = measured[:, column]
             found[name] = recording.labels[column]
     if not found:
         raise FitError(
@@ -83,6 +90,7 @@ def match_markers(
         match.missing,
         tuple(recording.labels[i] for i in others),
         recording.positions[:, others],
+        variance,
     )
 
 

@@ -8,6 +8,7 @@ and forces are summed once up the tree and projected on the screw of each freedo
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 
 import casadi as ca
@@ -17,7 +18,8 @@ from numpy.typing import NDArray
 from condyle.model.elementary import Expression
 from condyle.model.kinematics import Kinematics, Screw
 from condyle.model.skeleton import LABORATORY, Skeleton
-from condyle.solver.over_frames import FrameFunction, Replay
+from condyle.solver.over_frames import FrameFunction, over_frames
+from condyle.solver.packed_matrices import Pattern
 
 FloatArray = NDArray[np.float64]
 
@@ -89,11 +91,12 @@ class NormalEquations:
     Attributes
     ----------
     kinematics : Kinematics
-    pairs : (entries, 2) int
-        Row and column (row >= column) of each stored entry of H; all others are zero.
+    pattern : Pattern
+        Of H and of its curvature.
     """
 
-    def __init__(self, kinematics: Kinematics) -> None:
+    def __init__(self, kinematics: Kinematics, also: Iterable[tuple[int, int]] = ()) -> None:
+        """Work out the functions; `also` are pairs (row >= column) that other terms will add to."""
         self.kinematics = kinematics
         skeleton = kinematics.skeleton
         measured = ca.SX.sym("measured", 3 * len(skeleton.markers))
@@ -103,8 +106,9 @@ class NormalEquations:
         moments = _subtree_moments(skeleton, points, residuals, weights)
         entries, gradient = self._project(moments)
         cost = ca.dot(ca.vec(ca.repmat(weights.T, 3, 1)), residuals**2) / 2
-        self.pairs = np.array(sorted(entries), dtype=np.int64).reshape(-1, 2)
-        values = ca.vertcat(ca.SX(0, 1), *[entries[row, column] for row, column in self.pairs])
+        bent = self._curvature(moments)
+        self.pattern = Pattern({*entries, *bent, *also}, kinematics.freedoms.size)
+        values = self._in_order(entries)
         self.function = ca.Function(
             "normal_equations",
             [kinematics.scalars, kinematics.quaternions, measured, weights, kinematics.numbers],
@@ -113,17 +117,20 @@ class NormalEquations:
             ["entries", "gradient", "cost"],
             {"cse": True},
         )
-        self._evaluate: FrameFunction = Replay(self.function)
-        bent = self._curvature(moments)
-        self.bent_pairs = np.array(sorted(bent), dtype=np.int64).reshape(-1, 2)
-        bent_values = ca.vertcat(ca.SX(0, 1), *[bent[k, j] for k, j in self.bent_pairs])
-        self._evaluate_curvature: FrameFunction = Replay(
+        self._evaluate: FrameFunction = over_frames(self.function)
+        self._evaluate_curvature: FrameFunction = over_frames(
             ca.Function(
                 "curvature",
                 [kinematics.scalars, kinematics.quaternions, measured, weights, kinematics.numbers],
-                [ca.densify(bent_values)],
+                [ca.densify(self._in_order(bent))],
                 {"cse": True},
             )
+        )
+
+    def _in_order(self, entries: dict[tuple[int, int], Expression]) -> Expression:
+        zero = ca.SX(0)
+        return ca.vertcat(
+            ca.SX(0, 1), *[entries.get((int(k), int(j)), zero) for k, j in self.pattern.pairs]
         )
 
     def _project(
@@ -191,7 +198,16 @@ class NormalEquations:
                 ancestors.append(ancestors[parent] | {parent})
         return ancestors
 
-    def __call__(
+    def __call__(self, *inputs: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """H (frames, n, n), g (frames, n) and cost (frames,); inputs as `packed` takes them."""
+        values, gradient, cost = self.packed(*inputs)
+        return self.pattern.dense(values), gradient, cost
+
+    def curvature(self, *inputs: FloatArray) -> FloatArray:
+        """(frames, n, n) sum of w r' d2p: H minus this is the cost's exact second derivative."""
+        return self.pattern.dense(self.packed_curvature(*inputs))
+
+    def packed(
         self,
         scalars: FloatArray,
         quaternions: FloatArray,
@@ -211,7 +227,7 @@ class NormalEquations:
 
         Returns
         -------
-        H (frames, n, n), g (frames, n), cost (frames,)
+        H (frames, entries) packed by `pattern`, g (frames, n), cost (frames,)
         """
         frames = len(scalars)
         values, gradient, cost = self._evaluate(
@@ -221,9 +237,9 @@ class NormalEquations:
             weights,
             numbers,
         )
-        return self._symmetric(values, self.pairs), gradient, cost[:, 0]
+        return values, gradient, cost[:, 0]
 
-    def curvature(
+    def packed_curvature(
         self,
         scalars: FloatArray,
         quaternions: FloatArray,
@@ -231,7 +247,7 @@ class NormalEquations:
         weights: FloatArray,
         numbers: FloatArray,
     ) -> FloatArray:
-        """(frames, n, n) sum of w r' d2p: H minus this is the cost's exact second derivative."""
+        """The curvature (frames, entries), packed by `pattern`; inputs as `packed` takes them."""
         frames = len(scalars)
         (values,) = self._evaluate_curvature(
             scalars,
@@ -240,12 +256,4 @@ class NormalEquations:
             weights,
             numbers,
         )
-        return self._symmetric(values, self.bent_pairs)
-
-    def _symmetric(self, values: FloatArray, pairs: NDArray[np.int64]) -> FloatArray:
-        size = self.kinematics.freedoms.size
-        full = np.zeros((len(values), size, size))
-        rows, columns = pairs.T
-        full[:, rows, columns] = values
-        full[:, columns, rows] = values
-        return full
+        return values

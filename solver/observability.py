@@ -9,6 +9,8 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.solver.many_matrices import inverse_traces, inverses, unit_diagonal
+
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
 
@@ -17,6 +19,8 @@ NULL_SHARE = 1e-10
 LEAST_INFORMATION = 1e-12
 """Information of a freedom, over the largest of its frame, below which it is rounding: moments about the
 laboratory's origin cancel to about 1e-16 of themselves, and a person may stand 10 m from it."""
+SAFE_SHARE = 1e-2
+"""Share of 1 / NULL_SHARE below which the trace of an inverse is far from that of a singular matrix."""
 PARTICIPATION = 1e-6
 """Squared share of a freedom in the null space above which it counts as undetermined."""
 
@@ -25,16 +29,6 @@ def _usable(H: FloatArray, free: BoolArray) -> BoolArray:
     """Free freedoms that move anything at all, beyond rounding."""
     diagonal = np.einsum("nii->ni", H)
     return np.asarray(free & (diagonal > LEAST_INFORMATION * diagonal.max(axis=1, keepdims=True)))
-
-
-def _unit_diagonal(H: FloatArray, free: BoolArray) -> tuple[FloatArray, FloatArray]:
-    diagonal = np.einsum("nii->ni", H)
-    usable = free & (diagonal > 0)
-    scale = np.where(usable, 1 / np.sqrt(np.where(usable, diagonal, 1.0)), 0.0)
-    unit = H * scale[:, :, None] * scale[:, None, :]
-    index = np.arange(H.shape[1])
-    unit[:, index, index] = 1.0
-    return unit, scale
 
 
 def dependent_pivots(H: FloatArray, free: BoolArray) -> BoolArray:
@@ -52,7 +46,7 @@ def dependent_pivots(H: FloatArray, free: BoolArray) -> BoolArray:
         Pinning these makes the rest determined.
     """
     usable = _usable(H, free)
-    unit, _ = _unit_diagonal(H, usable)
+    unit, _ = unit_diagonal(H, usable)
     frames, size = free.shape
     left = np.ones((frames, size))
     remaining = np.ones((frames, size), dtype=bool)
@@ -73,6 +67,16 @@ def dependent_pivots(H: FloatArray, free: BoolArray) -> BoolArray:
     return np.asarray(free & (remaining | ~usable))
 
 
+def _surely_determined(H: FloatArray, usable: BoolArray) -> BoolArray:
+    """(frames,) Whether no pivot can be near `NULL_SHARE`.
+
+    Every pivot, in any order, is at least the smallest eigenvalue, and that at least one over the
+    trace of the inverse.
+    """
+    trace = inverse_traces(H, usable)
+    return np.asarray((trace > 0) & (trace < SAFE_SHARE / NULL_SHARE))
+
+
 def undetermined(H: FloatArray, free: BoolArray) -> tuple[BoolArray, BoolArray]:
     """What cannot be told.
 
@@ -83,11 +87,14 @@ def undetermined(H: FloatArray, free: BoolArray) -> tuple[BoolArray, BoolArray]:
     involved : (frames, n) bool
         Every freedom that takes part in an undetermined combination.
     """
-    pins = dependent_pivots(H, free)
+    usable = _usable(H, free)
+    pins = np.asarray(free & ~usable)
+    doubtful = np.flatnonzero(~_surely_determined(H, usable))
+    pins[doubtful] = dependent_pivots(H[doubtful], free[doubtful])
     involved = pins.copy()
     rows = np.flatnonzero(pins.any(axis=1))
     if len(rows):
-        unit, scale = _unit_diagonal(H[rows], _usable(H[rows], free[rows]))
+        unit, scale = unit_diagonal(H[rows], _usable(H[rows], free[rows]))
         values, vectors = np.linalg.eigh(unit)
         null = values[:, None, :] < NULL_SHARE * 10
         share = (np.where(null, vectors, 0.0) ** 2).sum(axis=2)
@@ -100,6 +107,4 @@ def covariance(H: FloatArray, free: BoolArray) -> FloatArray:
 
     H must be positive definite over the free ones.
     """
-    unit, scale = _unit_diagonal(H, free)
-    inverse = np.linalg.inv(unit)
-    return np.asarray(inverse * scale[:, :, None] * scale[:, None, :])
+    return inverses(H, free & (np.einsum("nii->ni", H) > 0))

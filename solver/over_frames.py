@@ -1,23 +1,30 @@
-"""One CasADi function evaluated for all frames at once, without a compiler.
+"""One CasADi function evaluated for all frames at once: the one interface, and the numpy backend.
 
-CasADi lists the instructions of an SX function; each becomes one numpy operation on a block of
-frames, so that Python's cost is paid once per block and not once per frame. A compiled backend can
-stand beside it: whatever takes ``(frames, n)`` arrays and returns them serves the solver.
+`over_frames` gives a function in the backend in use. Without a compiler that is the replay: each
+instruction of an SX function becomes one numpy operation on a block of frames, so that Python's cost
+is paid once per block and not once per frame. What does not fill a block goes to CasADi.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from typing import Any, Protocol
 
 import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.solver.backends import backend
+from condyle.solver.casadi_machine import CasadiMachine
+from condyle.solver.compiled_kernel import Compiled
+from condyle.solver.lane_program import lane_program
+
 FloatArray = NDArray[np.float64]
 
-BLOCK_FRAMES = 512
-"""Frames per block: a working set of a few thousand rows of this length stays in cache."""
+BLOCK_FRAMES = 1024
+"""Frames per block: what numpy spends on calling each operation is then the smaller part."""
+WORTH_A_BLOCK = 256
+"""Frames from which a block costs less than CasADi's virtual machine, frame by frame; measured."""
 
 
 class FrameFunction(Protocol):
@@ -27,7 +34,16 @@ class FrameFunction(Protocol):
         """Evaluate: inputs (frames, n) or, for what all frames share, (n,); outputs (frames, m)."""
 
 
-_UNARY: dict[int, Callable[..., Any]] = {
+def over_frames(function: Any) -> FrameFunction:
+    """A CasADi SX function of dense vectors, in the backend in use."""
+    used = backend()
+    if used.library is not None:
+        return Compiled(function, used.library)
+    return CasadiMachine(function) if used.name == "casadi" else ReplayOrMachine(function)
+
+
+_OPERATIONS: dict[int, Callable[..., Any]] = {
+    ca.OP_ASSIGN: np.positive,
     ca.OP_NEG: np.negative,
     ca.OP_SIN: np.sin,
     ca.OP_COS: np.cos,
@@ -43,8 +59,6 @@ _UNARY: dict[int, Callable[..., Any]] = {
     ca.OP_FABS: np.abs,
     ca.OP_SIGN: np.sign,
     ca.OP_NOT: np.logical_not,
-}
-_BINARY: dict[int, Callable[..., Any]] = {
     ca.OP_ADD: np.add,
     ca.OP_SUB: np.subtract,
     ca.OP_MUL: np.multiply,
@@ -80,61 +94,81 @@ class Replay:
     """
 
     def __init__(self, function: Any, *, block: int = BLOCK_FRAMES) -> None:
-        self._sizes_out = [function.numel_out(i) for i in range(function.n_out())]
-        self._work = np.zeros((function.sz_w(), block))
-        self._block = block
-        self._program = [self._instruction(function, k) for k in range(function.n_instructions())]
+        program = lane_program(function, join=False)
+        self._program, self._block = program, block
+        self._work = np.zeros((program.rows, block))
+        self._work[: len(program.constants)] = program.constants[:, None]
+        self._steps = [self._step(*row) for row in program.instructions.tolist()]
+
+    def __call__(self, *inputs: FloatArray) -> list[FloatArray]:
+        """Evaluate for every frame; at least one input is ``(frames, n)``."""
+        program = self._program
+        frames = next(len(x) for x in inputs if x.ndim == 2)
+        outputs = [np.empty((frames, size)) for size in program.output_sizes]
+        for start in range(0, frames, self._block):
+            stop = min(start + self._block, frames)
+            for x, first, size in zip(
+                inputs, program.first_input, program.input_sizes, strict=True
+            ):
+                rows = self._work[first : first + size]
+                if x.ndim == 2:
+                    rows[:, : stop - start] = x[start:stop].T
+                    rows[:, stop - start :] = x[stop - 1][:, None]
+                else:
+                    rows[:] = x[:, None]
+            self._run()
+            for out, first in zip(outputs, program.first_output, strict=True):
+                out[start:stop] = self._work[first : first + out.shape[1], : stop - start].T
+        return outputs
+
+    def _run(self) -> None:
+        with np.errstate(all="ignore"):
+            for operation, rows in self._steps:
+                operation(*rows)
+
+    def _step(
+        self, op: int, target: int, x: int, y: int, _: int
+    ) -> tuple[Callable[..., Any], tuple[FloatArray, ...]]:
+        work = self._work
+        if op == ca.OP_IF_ELSE_ZERO:
+            return _value_if, (work[x], work[y], work[target])
+        if op == ca.OP_TWICE:
+            return np.add, (work[x], work[x], work[target])
+        operation = _OPERATIONS[op]
+        if getattr(operation, "nin", 1) == 1:
+            return operation, (work[x], work[target])
+        return operation, (work[x], work[y], work[target])
+
+
+def _value_if(condition: FloatArray, value: FloatArray, out: FloatArray) -> None:
+    """`value` where the condition holds, else 0 (never 0 times NaN)."""
+    np.copyto(out, np.where(condition != 0, value, 0.0))
+
+
+class ReplayOrMachine:
+    """A function replayed in numpy where there are frames enough, else evaluated by CasADi.
+
+    Parameters
+    ----------
+    function : casadi.Function
+        Of dense SX vectors.
+    """
+
+    def __init__(self, function: Any) -> None:
+        self._replay, self._machine = Replay(function), CasadiMachine(function)
 
     def __call__(self, *inputs: FloatArray) -> list[FloatArray]:
         """Evaluate for every frame; at least one input is ``(frames, n)``."""
         frames = next(len(x) for x in inputs if x.ndim == 2)
-        columns = [np.ascontiguousarray(x.T) if x.ndim == 2 else x for x in inputs]
-        outputs = [np.zeros((size, frames)) for size in self._sizes_out]
-        for start in range(0, frames, self._block):
-            self._run(columns, outputs, start, min(start + self._block, frames))
-        return [np.ascontiguousarray(out.T) for out in outputs]
-
-    def _run(
-        self, inputs: Sequence[FloatArray], outputs: Sequence[FloatArray], start: int, stop: int
-    ) -> None:
-        count = stop - start
-        work = self._work[:, :count]
-        rows = list(work)
-        with np.errstate(all="ignore"):
-            for kind, target, operands in self._program:
-                if kind == "input":
-                    source = inputs[operands[0]]
-                    rows[target][:] = (
-                        source[operands[1], start:stop] if source.ndim == 2 else source[operands[1]]
-                    )
-                elif kind == "output":
-                    outputs[operands[0]][operands[1], start:stop] = rows[target]
-                elif kind == "constant":
-                    rows[target][:] = operands[0]
-                else:
-                    kind(*(rows[i] for i in operands), out=rows[target])
-
-    @staticmethod
-    def _instruction(function: Any, k: int) -> tuple[Any, int, tuple[Any, ...]]:
-        op = function.instruction_id(k)
-        inputs, outputs = function.instruction_input(k), function.instruction_output(k)
-        if op == ca.OP_CONST:
-            return "constant", outputs[0], (function.instruction_constant(k),)
-        if op == ca.OP_INPUT:
-            return "input", outputs[0], (inputs[0], inputs[1])
-        if op == ca.OP_OUTPUT:
-            return "output", inputs[0], (outputs[0], outputs[1])
-        if op == ca.OP_TWICE:
-            return np.add, outputs[0], (inputs[0], inputs[0])
-        if op == ca.OP_IF_ELSE_ZERO:
-            return _value_if, outputs[0], tuple(inputs)
-        if op == ca.OP_ASSIGN:
-            return np.positive, outputs[0], tuple(inputs)
-        if op in _UNARY or op in _BINARY:
-            return (_UNARY | _BINARY)[op], outputs[0], tuple(inputs)
-        raise NotImplementedError(f"no numpy counterpart for CasADi operation {op}")
-
-
-def _value_if(condition: FloatArray, value: FloatArray, *, out: FloatArray) -> None:
-    """`value` where the condition holds, else 0 (never 0 times NaN)."""
-    np.copyto(out, np.where(condition != 0, value, 0.0))
+        left = frames % BLOCK_FRAMES
+        whole = frames - left if left < WORTH_A_BLOCK else frames
+        parts = []
+        for evaluate, rows in (
+            (self._replay, slice(0, whole)),
+            (self._machine, slice(whole, frames)),
+        ):
+            if rows.stop > rows.start:
+                parts.append(evaluate(*[x[rows] if x.ndim == 2 else x for x in inputs]))
+        if len(parts) == 1:
+            return parts[0]
+        return [np.concatenate(outputs) for outputs in zip(*parts, strict=True)]

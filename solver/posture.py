@@ -49,9 +49,26 @@ class Posture:
         balls = self.quaternions.shape[1]
         if not balls:
             return Posture(scalars, self.quaternions)
-        vectors = step[:, count:].reshape(-1, 3)
-        turned = rotations(self.quaternions.reshape(-1, 4)) * Rotation.from_rotvec(vectors)
-        return Posture(scalars, quaternions_of(turned).reshape(-1, balls, 4))
+        return Posture(scalars, turned(self.quaternions, step[:, count:].reshape(-1, balls, 3)))
+
+
+def turned(quaternions: FloatArray, vectors: FloatArray) -> FloatArray:
+    """(..., 4) Unit quaternions after small turns (..., 3) in the child's axes: q exp(d / 2)."""
+    half = vectors / 2
+    angle = np.sqrt((half * half).sum(axis=-1))
+    part = np.sinc(angle / np.pi)
+    w, x, y, z = np.moveaxis(quaternions, -1, 0)
+    c, (a, b, d) = np.cos(angle), np.moveaxis(half * part[..., None], -1, 0)
+    after = np.stack(
+        [
+            w * c - x * a - y * b - z * d,
+            w * a + x * c + y * d - z * b,
+            w * b - x * d + y * c + z * a,
+            w * d + x * b - y * a + z * c,
+        ],
+        axis=-1,
+    )
+    return np.asarray(after / np.sqrt((after * after).sum(axis=-1))[..., None])
 
 
 def rotations(quaternions: FloatArray) -> Rotation:
@@ -62,6 +79,12 @@ def rotations(quaternions: FloatArray) -> Rotation:
 def quaternions_of(stack: Rotation) -> FloatArray:
     """(n, 4) unit quaternions, scalar first."""
     return np.asarray(stack.as_quat(scalar_first=True), dtype=np.float64)
+
+
+def continuous(quaternions: FloatArray) -> FloatArray:
+    """(frames, 4) The same orientations, each in the sign that lies nearer to the one before."""
+    turns = np.where((quaternions[1:] * quaternions[:-1]).sum(axis=1) < 0, -1.0, 1.0)
+    return quaternions * np.cumprod(np.concatenate([[1.0], turns]))[:, None]
 
 
 def upright_posture(scalars: FloatArray, balls: int, frames: int) -> Posture:

@@ -5,6 +5,7 @@ The covariance of a step goes through the derivative of each reported number; no
 
 from __future__ import annotations
 
+import warnings
 from dataclasses import dataclass
 
 import casadi as ca
@@ -24,12 +25,18 @@ from condyle.model.skeleton import (
 )
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.joint_angles import report_angles
-from condyle.solver.over_frames import Replay
+from condyle.solver.over_frames import over_frames
 from condyle.solver.posture import Posture, rotations
 from condyle.solver.results import Column
+from condyle.solver.time_derivatives import derivatives
+from condyle.solver.trial_estimate import TrialEstimate
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
+
+NEAR_SINGULAR = np.radians(5.0)
+"""Closer to the singularity of a reported sequence than this, its angles have no rate worth telling."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,29 +61,64 @@ class Reported:
 
 @dataclass(frozen=True, slots=True)
 class _Piece:
-    """Some columns with their values and their derivatives for a step (frames, columns, n)."""
+    """Some columns with their values, and their derivatives (frames, columns, m) for m freedoms."""
 
     columns: list[Column]
     values: FloatArray
+    freedoms: IntArray
     rates: FloatArray
+    of_ball: bool
 
 
 def report(kinematics: Kinematics, fits: FrameFits) -> Reported:
     """Everything the model names, in the order of its joints."""
     pieces = _pieces(kinematics, fits.posture)
     columns = tuple(column for piece in pieces for column in piece.columns)
-    frames, size = fits.involved.shape
-    values = np.concatenate([np.zeros((frames, 0)), *[piece.values for piece in pieces]], axis=1)
-    rates = np.concatenate(
-        [np.zeros((frames, 0, size)), *[piece.rates for piece in pieces]], axis=1
-    )
-    moved = rates != 0
-    variance = np.einsum("nci,nij,ncj->nc", rates, fits.covariance, rates, optimize=True)
-    involved = (moved & fits.involved[:, None, :]).any(axis=2)
-    sd = np.where(involved, np.nan, np.sqrt(np.maximum(variance, 0.0)))
+    values = _side_by_side([piece.values for piece in pieces], len(fits.posture))
+    involved = _touched(pieces, fits.involved)
+    sd = np.where(involved, np.nan, _sd(pieces, fits.covariance))
     ranged = np.array([column.has_range for column in columns], dtype=bool)
-    at_limit = (moved & fits.at_limit[:, None, :]).any(axis=2) & ranged
+    at_limit = _touched(pieces, fits.at_limit) & ranged
     return Reported(columns, values, sd, at_limit, involved)
+
+
+def report_derivatives(
+    kinematics: Kinematics, estimate: TrialEstimate, told: Reported, rate: float
+) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
+    """Rates and accelerations of everything reported, each with its sd.
+
+    Returns
+    -------
+    rates, rates_sd, accelerations, accelerations_sd : (frames, columns)
+        Per second and second squared; NaN where undetermined or near a reported singularity.
+    """
+    pieces = _pieces(kinematics, estimate.fits.posture)
+    steep = _side_by_side([_steepness(piece) for piece in pieces], len(told.values))
+    hidden = told.involved | (steep > 1 / np.sin(NEAR_SINGULAR))
+    found = []
+    first, second = derivatives(told.values, rate)
+    for values, covariance in (
+        (first, estimate.rate_covariance),
+        (second, estimate.acceleration_covariance),
+    ):
+        missing = hidden | np.isnan(values)
+        found += [
+            np.where(missing, np.nan, values),
+            np.where(missing, np.nan, _sd(pieces, covariance)),
+        ]
+    rates, rates_sd, accelerations, accelerations_sd = found
+    return rates, rates_sd, accelerations, accelerations_sd
+
+
+def white_share(kinematics: Kinematics, estimate: TrialEstimate) -> FloatArray:
+    """(columns,) Median share of white noise in the variance of each number; NaN where it has none."""
+    pieces = _pieces(kinematics, estimate.fits.posture)
+    white, whole = _sd(pieces, estimate.white), _sd(pieces, estimate.fits.covariance)
+    share = np.full(whole.shape, np.nan)
+    np.divide(white**2, whole**2, out=share, where=whole > 0)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", RuntimeWarning)
+        return np.asarray(np.nanmedian(share, axis=0))
 
 
 def reported_values(
@@ -86,8 +128,40 @@ def reported_values(
     found = {}
     for piece in _pieces(kinematics, posture):
         for i, column in enumerate(piece.columns):
-            found[column.name] = (piece.values[:, i], piece.rates[:, i])
+            rates = np.zeros((len(posture), kinematics.freedoms.size))
+            rates[:, piece.freedoms] = piece.rates[:, i]
+            found[column.name] = (piece.values[:, i], rates)
     return found
+
+
+def _side_by_side(parts: list[FloatArray], frames: int) -> FloatArray:
+    return np.concatenate([np.zeros((frames, 0)), *parts], axis=1)
+
+
+def _sd(pieces: list[_Piece], covariance: FloatArray) -> FloatArray:
+    """(frames, columns) Root of J C J'."""
+    parts = []
+    for piece in pieces:
+        block = covariance[:, piece.freedoms[:, None], piece.freedoms]
+        variance = np.einsum("nci,nij,ncj->nc", piece.rates, block, piece.rates, optimize=True)
+        parts.append(np.sqrt(np.maximum(variance, 0.0)))
+    return _side_by_side(parts, len(covariance))
+
+
+def _touched(pieces: list[_Piece], flags: BoolArray) -> BoolArray:
+    """(frames, columns) Whether a flagged freedom enters a number."""
+    parts = [
+        ((piece.rates != 0) & flags[:, None, piece.freedoms]).any(axis=2).astype(float)
+        for piece in pieces
+    ]
+    return _side_by_side(parts, len(flags)) > 0
+
+
+def _steepness(piece: _Piece) -> FloatArray:
+    """(frames, columns) How much a reported angle changes for a turn; 0 for plain coordinates."""
+    if not piece.of_ball:
+        return np.zeros(piece.values.shape)
+    return np.asarray(np.linalg.norm(piece.rates, axis=2))
 
 
 def _pieces(kinematics: Kinematics, posture: Posture) -> list[_Piece]:
@@ -100,7 +174,9 @@ def _pieces(kinematics: Kinematics, posture: Posture) -> list[_Piece]:
         if names:
             rows = [position.pop(name) for name in names]
             columns = [_column(skeleton, skeleton.coordinates[row], joint) for row in rows]
-            pieces.append(_Piece(columns, values[:, rows], rates[:, rows]))
+            touched = np.flatnonzero((rates[:, rows] != 0).any(axis=(0, 1)))
+            own = rates[:, rows][:, :, touched]
+            pieces.append(_Piece(columns, values[:, rows], touched, own, of_ball=False))
         if isinstance(joint.motion, Floating | Spherical):
             pieces.append(_angles(kinematics, posture, joint, joint.motion.angles))
     return pieces
@@ -115,28 +191,26 @@ def _names(joint: Joint) -> list[str]:
 
 
 def _coordinates(kinematics: Kinematics, posture: Posture) -> tuple[FloatArray, FloatArray]:
-    """Values (frames, coordinates) and derivatives (frames, coordinates, freedoms)."""
+    """Values (frames, coordinates) and derivatives (frames, coordinates, scalars)."""
     expression = kinematics.coordinate_values
     jacobian = ca.densify(ca.jacobian(expression, kinematics.scalars))
     count, scalars = expression.numel(), len(kinematics.freedoms.scalars)
     frames = len(posture)
-    rates = np.zeros((frames, count, kinematics.freedoms.size))
+    rates = np.zeros((frames, count, scalars))
     if not count:
         return np.zeros((frames, 0)), rates
     function = ca.Function(
         "coordinates", [kinematics.scalars], [ca.densify(expression), ca.vec(jacobian.T)]
     )
-    values, flat = Replay(function)(posture.scalars)
-    rates[:, :, :scalars] = flat.reshape(frames, count, scalars)
-    return values, rates
+    values, flat = over_frames(function)(posture.scalars)
+    return values, flat.reshape(frames, count, scalars)
 
 
 def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: AngleReport) -> _Piece:
     ball = kinematics.freedoms.balls.index(joint.name)
     rotation = rotations(posture.quaternions[:, ball]).as_matrix()
     found = report_angles(rotation, angles)
-    rates = np.zeros((len(posture), 4, kinematics.freedoms.size))
-    rates[:, :, kinematics.freedoms.ball_slice(ball)] = found.rates
+    here = kinematics.freedoms.ball_slice(ball)
     axes = "xyz"
     motion = joint.motion
     limited = isinstance(motion, Spherical) and (motion.cone, motion.twist) != (None, None)
@@ -161,7 +235,8 @@ def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: Angl
             has_range=False,
         )
     )
-    return _Piece(columns, found.values, rates)
+    freedoms = np.arange(here.start, here.stop)
+    return _Piece(columns, found.values, freedoms, found.rates, of_ball=True)
 
 
 def _column(skeleton: Skeleton, coordinate: Coordinate, joint: Joint) -> Column:

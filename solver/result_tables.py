@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
 from condyle.solver.posture import quaternions_of
-from condyle.solver.results import FittedMotion, TrialFit
+from condyle.solver.results import FittedMotion, TimeDerivatives, TrialFit
 
 FloatArray = NDArray[np.float64]
 
@@ -33,6 +33,12 @@ def coordinate_table(fit: TrialFit) -> pd.DataFrame:
         table[f"{column.name}.sd"] = sd[:, i]
         if column.has_range:
             table[f"{column.name}.at_limit"] = fit.at_limit[:, i]
+        if fit.derivatives is not None:
+            factor = float(_in_file_units(np.ones(1), [column.unit])[0])
+            table[f"{column.name}.rate"] = fit.derivatives.rates[:, i] * factor
+            table[f"{column.name}.rate.sd"] = fit.derivatives.rates_sd[:, i] * factor
+            table[f"{column.name}.accel"] = fit.derivatives.accelerations[:, i] * factor
+            table[f"{column.name}.accel.sd"] = fit.derivatives.accelerations_sd[:, i] * factor
     return pd.DataFrame(table)
 
 
@@ -48,7 +54,19 @@ def column_meanings(fit: TrialFit) -> pd.DataFrame:
         rows.append((f"{column.name}.sd", unit, "standard deviation; empty where undetermined"))
         if column.has_range:
             rows.append((f"{column.name}.at_limit", "1", "1 where it is at a limit of its range"))
+        if fit.derivatives is not None:
+            rows += _derivative_meanings(column.name, unit)
     return pd.DataFrame(rows, columns=["column", "unit", "meaning"])
+
+
+def _derivative_meanings(name: str, unit: str) -> list[tuple[str, str, str]]:
+    near = "; empty where undetermined or near a singularity"
+    return [
+        (f"{name}.rate", f"{unit}/s", f"its derivative in time{near}"),
+        (f"{name}.rate.sd", f"{unit}/s", "standard deviation"),
+        (f"{name}.accel", f"{unit}/s2", f"its second derivative in time{near}"),
+        (f"{name}.accel.sd", f"{unit}/s2", "standard deviation"),
+    ]
 
 
 def marker_table(fit: TrialFit) -> pd.DataFrame:
@@ -76,8 +94,11 @@ def marker_table(fit: TrialFit) -> pd.DataFrame:
     ).astype({"marker": str, "why_not": str})
 
 
-def segment_table(motion: FittedMotion) -> pd.DataFrame:
-    """One row a frame and segment: origin (m) and unit quaternion, continuous in sign."""
+def segment_table(motion: FittedMotion, derivatives: TimeDerivatives | None) -> pd.DataFrame:
+    """One row a frame and segment: origin (m), unit quaternion continuous in sign, velocities.
+
+    The velocities (m/s, deg/s, laboratory axes) only where the trial was estimated as a whole.
+    """
     frames, segments = motion.laboratory_from_segment.shape[:2]
     quaternions = continuous_quaternions(motion.laboratory_from_segment[..., :3, :3])
     origins = motion.laboratory_from_segment[..., :3, 3].reshape(-1, 3)
@@ -89,8 +110,20 @@ def segment_table(motion: FittedMotion) -> pd.DataFrame:
             "segment": np.tile(np.array(motion.segment_names, dtype=object), frames),
             **{axis: origins[:, i] for i, axis in enumerate("xyz")},
             **{name: flat[:, i] for i, name in enumerate(("qw", "qx", "qy", "qz"))},
+            **_velocities(derivatives),
         }
     )
+
+
+def _velocities(derivatives: TimeDerivatives | None) -> dict[str, FloatArray]:
+    if derivatives is None:
+        return {}
+    linear = derivatives.linear.reshape(-1, 3)
+    angular = np.degrees(derivatives.angular.reshape(-1, 3))
+    return {
+        **{f"v{axis}": linear[:, i] for i, axis in enumerate("xyz")},
+        **{f"w{axis}": angular[:, i] for i, axis in enumerate("xyz")},
+    }
 
 
 def continuous_quaternions(rotation: FloatArray) -> FloatArray:

@@ -95,6 +95,50 @@ class Column:
 
 
 @dataclass(frozen=True, slots=True)
+class TimeDerivatives:
+    """How fast everything goes; part of the same estimate as the values.
+
+    Attributes
+    ----------
+    rates, rates_sd : (frames, columns) rad/s or m/s
+    accelerations, accelerations_sd : (frames, columns) rad/s^2 or m/s^2
+        NaN where undetermined, and near the singularity of a reported sequence.
+    linear, angular : (frames, segments, 3) m/s and rad/s
+        Of the segments' origins and of the segments, in laboratory axes.
+    """
+
+    rates: FloatArray
+    rates_sd: FloatArray
+    accelerations: FloatArray
+    accelerations_sd: FloatArray
+    linear: FloatArray
+    angular: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class Smoothing:
+    """How a trial was estimated as a whole.
+
+    Attributes
+    ----------
+    order : int
+        Of the differences taken to be white: 3 is white jerk, 4 white snap.
+    white_noise : float
+        m; the markers' white noise as read from the trial, the median over the freedoms.
+    white_share : column -> median share of white noise in its variance
+        The rest persists: skin and whatever else moves with the person.
+    rounds : int
+    bridged : column -> number of frames told from their neighbours alone
+    """
+
+    order: int
+    white_noise: float
+    white_share: Mapping[str, float]
+    rounds: int
+    bridged: Mapping[str, int]
+
+
+@dataclass(frozen=True, slots=True)
 class TrialFit:
     """Joint coordinates fitted to one recording, with how well they explain it.
 
@@ -120,6 +164,10 @@ class TrialFit:
     freedoms, freedoms_tied : int
         Of the skeleton without its ties; how many the ties take away.
     tie_errors : tie -> largest departure over the trial, m
+    derivatives : TimeDerivatives or None
+        Only where the trial was estimated as a whole.
+    smoothing : Smoothing or None
+        Likewise; None where each frame was fitted by itself.
     """
 
     motion: FittedMotion
@@ -139,6 +187,8 @@ class TrialFit:
     freedoms: int
     freedoms_tied: int
     tie_errors: Mapping[str, float]
+    derivatives: TimeDerivatives | None = None
+    smoothing: Smoothing | None = None
 
     def __post_init__(self) -> None:
         frames = len(self.motion.time)

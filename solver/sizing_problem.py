@@ -20,12 +20,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.solver.cone_limits import add_limits
+from condyle.solver.cone_limits import limit_terms
 from condyle.solver.frame_problem import SkeletonFunctions
 from condyle.solver.least_squares import Bounds
 from condyle.solver.posture import Posture
 from condyle.solver.reported import reported_values
-from condyle.solver.rest_pulls import add_ball_pull
 from condyle.solver.sizing_functions import SizingFunctions
 from condyle.solver.upright import Upright
 
@@ -100,10 +99,13 @@ class SizingProblem:
 
     def _add_balls(self, posture: Posture, H: FloatArray, g: FloatArray, cost: FloatArray) -> None:
         """Limits and pulls of spherical joints."""
-        for limited in self.functions.limited_balls:
-            add_limits(limited, posture, self._ball_slice(limited.ball), H, g, cost)
-        for pulled in self.functions.pulled_balls:
-            add_ball_pull(pulled, posture, self._ball_slice(pulled[0]), H, g, cost)
+        terms = [(b.ball, limit_terms(b, posture)) for b in self.functions.limited_balls]
+        terms += [(pull.ball, pull.terms(posture)) for pull in self.functions.pulled_balls]
+        for ball, (more_H, more_g, more_cost) in terms:
+            here = self._ball_slice(ball)
+            H[:, here, here] += more_H
+            g[:, here] += more_g
+            cost += more_cost
 
     def _ball_slice(self, ball: int) -> slice:
         own = self.functions.kinematics.freedoms.ball_slice(ball)
@@ -154,8 +156,8 @@ class SizingProblem:
         self._size_terms(posture, H, np.zeros(self.freedoms))
         self._posture_terms(posture, H, np.zeros(self.freedoms))
         pulled = np.diag(H) > 0
-        for ball, _ in self.functions.pulled_balls:
-            pulled[self._ball_slice(ball)] = True
+        for pull in self.functions.pulled_balls:
+            pulled[self._ball_slice(pull.ball)] = True
         return np.asarray(pulled)
 
     def start_scalars(self) -> FloatArray:

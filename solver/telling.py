@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.skeleton import LABORATORY, Marker, Skeleton
+from condyle.solver.cold_start import tightened
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.observability import covariance, undetermined
 from condyle.solver.posture import Posture
@@ -66,7 +67,7 @@ def tell(skeleton: Skeleton, *, present: BoolArray | None = None) -> Telling:
         Which markers there really are; by default all that have a place.
     """
     present = np.ones(len(skeleton.markers), dtype=bool) if present is None else present
-    judged = _judge(skeleton, present)
+    judged = _judge(SkeletonFunctions(skeleton), present)
     unseen = tuple(name for name, sd in judged.sd.items() if np.isnan(sd))
     remedies = _remedies(skeleton, present, unseen) if unseen else {}
     return Telling(judged.sd, unseen, remedies, judged.pairs)
@@ -78,11 +79,8 @@ class _Judged:
     pairs: tuple[tuple[str, str, float], ...]
 
 
-def _judge(skeleton: Skeleton, present: BoolArray) -> _Judged:
-    functions = SkeletonFunctions(skeleton)
-    markers = np.where(present[None, :, None], np.zeros((POSTURES, len(present), 3)), np.nan)
-    problem = frame_problem(skeleton, functions, markers, Upright("+Y", "any"))
-    postures = drawn_postures(problem, np.random.default_rng(0))
+def _judge(functions: SkeletonFunctions, present: BoolArray) -> _Judged:
+    problem, postures = judged_postures(functions, present)
     H = problem.information(postures, np.arange(POSTURES))
     bounds = problem.bounds()
     pins, involved = undetermined(H, ~bounds.pinned)
@@ -96,7 +94,7 @@ def _judge(skeleton: Skeleton, present: BoolArray) -> _Judged:
     sd = np.sqrt(np.maximum(np.einsum("ncc->nc", full), 0.0))
     median = np.median(sd, axis=0)
     median[lost.all(axis=0)] = np.nan
-    chosen = _own_freedoms(skeleton, names, median)
+    chosen = _own_freedoms(functions.skeleton, names, median)
     return _Judged(
         {name: float(value) for name, value in zip(names, median, strict=True)},
         _pairs(names, chosen, full, sd),
@@ -133,24 +131,53 @@ def _remedies(skeleton: Skeleton, present: BoolArray, unseen: tuple[str, ...]) -
     bare = {m.segment for m, there in zip(skeleton.markers, present, strict=True) if there}
     candidates = [j.child for j in skeleton.joints if j.child not in bare]
     candidates += [j.child for j in skeleton.joints if j.child in bare]
-    for segment in candidates:
+    functions = SkeletonFunctions(_with_markers_on(skeleton, candidates))
+    for i, segment in enumerate(candidates):
         left = [name for name in unseen if name not in remedies]
         if not left:
             break
-        helped = _judge(*_with_markers_on(skeleton, present, segment))
+        tried = np.arange(len(candidates)).repeat(len(HELPING_MARKERS)) == i
+        helped = _judge(functions, np.append(present, tried))
         remedies |= {name: segment for name in left if not np.isnan(helped.sd[name])}
     return remedies
 
 
-def _with_markers_on(
-    skeleton: Skeleton, present: BoolArray, segment: str
-) -> tuple[Skeleton, BoolArray]:
+def _with_markers_on(skeleton: Skeleton, segments: list[str]) -> Skeleton:
+    """The skeleton with markers that nobody wears, some on each segment, to be counted or not."""
     extra = tuple(
         Marker(f"{LABORATORY} tries {segment} {i}", segment, at=place)
+        for segment in segments
         for i, place in enumerate(HELPING_MARKERS)
     )
-    more = replace(skeleton, markers=skeleton.markers + extra)
-    return more, np.append(present, np.ones(len(extra), dtype=bool))
+    return replace(skeleton, markers=skeleton.markers + extra)
+
+
+def judged_postures(
+    functions: SkeletonFunctions, present: BoolArray
+) -> tuple[FrameProblem, Posture]:
+    """The postures at which a model is judged, the same at every call, and their problem.
+
+    Parameters
+    ----------
+    present : (markers,) bool
+        Which markers there are; the problem holds only which, not where they are.
+    """
+    markers = np.where(present[None, :, None], np.zeros((POSTURES, len(present), 3)), np.nan)
+    problem = frame_problem(functions.skeleton, functions, markers, Upright("+Y", "any"))
+    postures = drawn_postures(problem, np.random.default_rng(0))
+    return problem, _closed(problem, postures)
+
+
+def _closed(problem: FrameProblem, postures: Posture) -> Posture:
+    """The postures nearest by their markers in which the ties hold.
+
+    Where they do not, their equations point elsewhere, and would tell what no closed posture does.
+    """
+    if not len(problem.functions.ties):
+        return postures
+    seen = problem.functions.marker_positions(postures, problem.numbers)
+    own = replace(problem, measured=seen)
+    return tightened(own, postures, own.bounds(), damping=1e-3).posture
 
 
 def drawn_postures(problem: FrameProblem, rng: np.random.Generator) -> Posture:

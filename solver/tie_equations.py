@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from condyle.model.elementary import Expression
 from condyle.model.kinematics import Kinematics
 from condyle.model.skeleton import LABORATORY, MeetsPoint, OnEllipsoid, OnPlane, StaysAt, Tie
-from condyle.solver.over_frames import FrameFunction, Replay
+from condyle.solver.over_frames import FrameFunction, over_frames
 from condyle.solver.posture import Posture
 
 FloatArray = NDArray[np.float64]
@@ -84,7 +84,7 @@ class TieEquations:
         self._moved = np.array(
             [any(pattern.has_nz(r, k) for r in range(len(self))) for k in range(self._size)]
         )
-        return Replay(
+        return over_frames(
             ca.Function(
                 "ties",
                 [kinematics.scalars, kinematics.quaternions, kinematics.numbers],

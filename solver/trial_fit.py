@@ -30,11 +30,17 @@ from condyle.solver.matching import (
     match_markers,
     root_alignment,
 )
-from condyle.solver.reported import Reported, report
-from condyle.solver.results import FittedMotion, TrialFit
+from condyle.solver.reported import Reported, report, report_derivatives, white_share
+from condyle.solver.results import FittedMotion, Smoothing, TimeDerivatives, TrialFit
+from condyle.solver.robust_loss import Loss
+from condyle.solver.time_derivatives import segment_velocities
+from condyle.solver.trial_estimate import TrialEstimate, smooth_trial
 from condyle.solver.upright import Upright
 
 FloatArray = NDArray[np.float64]
+
+LEAST_WEIGHT = 0.05
+"""Of a sound marker's: below it, a robust loss has left a marker out, and it is said to be an outlier."""
 
 
 def clipped(recording: Recording, *, start: float | None, end: float | None) -> Recording:
@@ -72,6 +78,8 @@ def fit_trial(
     labels: Mapping[str, str] | None = None,
     start: float | None = None,
     end: float | None = None,
+    smooth: bool = False,
+    loss: Loss | None = None,
     functions: SkeletonFunctions | None = None,
     watch: Callable[[float], None] | None = None,
 ) -> TrialFit:
@@ -86,6 +94,10 @@ def fit_trial(
     labels : model marker -> label in the recording, optional
     start, end : float, optional
         s, on the recording's own clock.
+    smooth : bool
+        Whether the trial is one estimate, with rates and accelerations; else each frame is by itself.
+    loss : Loss, optional
+        In place of the sum of squares: see `robust_loss`.
     functions : SkeletonFunctions, optional
         Of the same model, so that several trials share them.
     watch : callable, optional
@@ -101,23 +113,42 @@ def fit_trial(
     functions = functions or SkeletonFunctions(skeleton)
     check_scale(root_alignment(functions, matched.positions), recording, skeleton)
     upright = choose_up(functions, recording, matched.positions, asked=up)
-    problem = frame_problem(skeleton, functions, matched.positions, upright)
+    problem = frame_problem(
+        skeleton, functions, matched.positions, upright, variance=matched.variance
+    ).with_loss(loss)
     _check_enough(problem, recording, skeleton)
     fits = fit_frames(problem, watch=watch)
-    return _assembled(skeleton, recording, matched, upright, problem, fits)
+    estimate = smooth_trial(problem, fits, recording.rate) if smooth else None
+    if estimate is None:
+        return _assembled(skeleton, recording, matched, upright, problem, fits)
+    fit = _assembled(skeleton, recording, matched, upright, problem, estimate.fits)
+    return _with_motion(fit, problem, estimate, fits)
 
 
 def frame_problem(
-    skeleton: Skeleton, functions: SkeletonFunctions, positions: FloatArray, upright: Upright
+    skeleton: Skeleton,
+    functions: SkeletonFunctions,
+    positions: FloatArray,
+    upright: Upright,
+    *,
+    variance: FloatArray | None = None,
 ) -> FrameProblem:
-    """The least-squares problem of marker positions (frames, markers, 3), NaN where missing."""
+    """The least-squares problem of marker positions.
+
+    Parameters
+    ----------
+    positions : (frames, markers, 3) m
+        NaN where missing.
+    variance : (frames, markers) m^2, optional
+        What the cameras' error adds to the square of a marker's sd.
+    """
     placed = is_seen(sized_marker_at(skeleton))
     present = is_seen(positions)
     sd = np.array([marker.sd for marker in skeleton.markers])
     return FrameProblem(
         functions,
         np.where(present[..., None], positions, 0.0),
-        (present & placed) / sd**2,
+        (present & placed) / (sd**2 + (0.0 if variance is None else variance)),
         sized_numbers(skeleton, upright.laboratory_from_upright),
     )
 
@@ -145,6 +176,7 @@ def _assembled(
     told = report(functions.kinematics, fits)
     fitted = functions.marker_positions(fits.posture, problem.numbers)
     placed = is_seen(sized_marker_at(skeleton))
+    outlier = _outliers(problem, fits)
     motion = FittedMotion(
         name=recording.name,
         frame=recording.frame,
@@ -156,7 +188,7 @@ def _assembled(
         marker_names=skeleton.marker_names,
         measured=matched.positions,
         fitted=np.where(placed[:, None], fitted, np.nan),
-        used=problem.weights > 0,
+        used=(problem.weights > 0) & ~outlier,
         joint_centres=sized_joint_centres(skeleton),
         landmarks=sized_landmarks(skeleton),
         shapes=grown_shapes(skeleton),
@@ -168,7 +200,7 @@ def _assembled(
         values=told.values,
         sd=told.sd,
         at_limit=told.at_limit,
-        why_not=_why_not(skeleton, matched, placed),
+        why_not=np.where(outlier, "outlier", _why_not(skeleton, matched, placed)),
         other_labels=matched.other_labels,
         other_positions=matched.other_positions,
         cost=fits.solution.cost,
@@ -180,6 +212,41 @@ def _assembled(
         freedoms_tied=functions.ties.freedom_taken(fits.posture, problem.numbers),
         tie_errors=functions.ties.largest(fits.posture, problem.numbers),
     )
+
+
+def _with_motion(
+    fit: TrialFit, problem: FrameProblem, estimate: TrialEstimate, frames: FrameFits
+) -> TrialFit:
+    """The fit with what only a whole trial can tell: rates, accelerations, velocities, noise."""
+    kinematics = problem.functions.kinematics
+    told = report(kinematics, estimate.fits)
+    linear, angular = segment_velocities(fit.motion.laboratory_from_segment, fit.rate)
+    derived = report_derivatives(kinematics, estimate, told, fit.rate)
+    names = [column.name for column in told.columns]
+    share = white_share(kinematics, estimate)
+    bridged = (report(kinematics, frames).involved & ~told.involved).sum(axis=0)
+    placed = problem.weights.max(axis=0)
+    sd = float(np.median(1 / np.sqrt(placed[placed > 0])))
+    smoothed = estimate.evidence.ratio > 0
+    return replace(
+        fit,
+        derivatives=TimeDerivatives(*derived, linear, angular),
+        smoothing=Smoothing(
+            order=estimate.evidence.order,
+            white_noise=float(np.median(estimate.evidence.kappa[smoothed])) * sd,
+            white_share=dict(zip(names, share.tolist(), strict=True)),
+            rounds=estimate.rounds,
+            bridged={n: int(c) for n, c in zip(names, bridged, strict=True) if c},
+        ),
+    )
+
+
+def _outliers(problem: FrameProblem, fits: FrameFits) -> NDArray[np.bool_]:
+    """(frames, markers) Measured markers that a robust loss has all but left out."""
+    if problem.loss is None:
+        return np.zeros(problem.weights.shape, dtype=bool)
+    squared = problem.squared_errors(fits.posture, np.arange(len(problem)))
+    return np.asarray((problem.weights > 0) & (problem.loss.weight(squared) < LEAST_WEIGHT))
 
 
 def _why_not(

@@ -41,6 +41,7 @@ __all__ = [
     "draw_contact_sheet",
     "draw_overlay",
     "overlay_camera",
+    "picture_kind",
     "save_picture",
     "typical_row",
     "worst_row",
@@ -176,6 +177,21 @@ def legend(
     )
 
 
+def picture_kind(path: Path | str) -> str:
+    """The kind of picture that a path's ending names, so that a wrong one is told before drawing.
+
+    Raises
+    ------
+    PictureError
+        Where the ending is not a picture's.
+    """
+    path = Path(path)
+    kind = Image.registered_extensions().get(path.suffix.lower())
+    if kind not in Image.SAVE:
+        raise PictureError(f"{path}: '{path.suffix}' is not a kind of picture; '.png' would be.")
+    return str(kind)
+
+
 def save_picture(image: Image.Image, path: Path | str) -> None:
     """Write the picture whole or not at all; the path's ending names its kind (.png, .jpg).
 
@@ -187,8 +203,6 @@ def save_picture(image: Image.Image, path: Path | str) -> None:
         Where the system refuses the path.
     """
     path = Path(path)
-    kind = Image.registered_extensions().get(path.suffix.lower())
-    if kind not in Image.SAVE:
-        raise PictureError(f"{path}: '{path.suffix}' is not a kind of picture; '.png' would be.")
+    kind = picture_kind(path)
     with whole_file(path) as beside:
         image.save(beside, format=kind)

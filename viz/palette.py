@@ -18,6 +18,7 @@ BLUE: Colour = (0, 114, 178)
 ORANGE: Colour = (230, 159, 0)
 PALE_ORANGE: Colour = (244, 214, 148)
 VERMILLION: Colour = (213, 94, 0)
+GREEN: Colour = (0, 158, 115)
 GREY: Colour = (122, 126, 134)
 
 RIGHT_BONE: Colour = (240, 231, 214)

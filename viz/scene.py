@@ -7,6 +7,7 @@ smooths better for its price than the graphics library's own way.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from types import TracebackType
 from typing import Any, Self
 
@@ -20,7 +21,7 @@ from condyle.viz.figure import Figure
 from condyle.viz.offscreen import open_pyvista
 from condyle.viz.shapes import Surface
 from condyle.viz.skeleton_plan import side_of
-from condyle.viz.viewpoint import Camera, level_axes
+from condyle.viz.viewpoint import Camera, level_axes, unit
 
 FloatArray = NDArray[np.float64]
 
@@ -35,6 +36,21 @@ SHADOW_POINTS = 9000
 
 BONE_LOOK = {"ambient": 0.38, "diffuse": 0.80, "specular": 0.08, "specular_power": 18}
 MARKER_LOOK = {"ambient": 0.55, "diffuse": 0.60, "specular": 0.12, "specular_power": 25}
+
+
+ARROWHEAD_LENGTH, ARROWHEAD_RADIUS = 7.5, 2.9
+"""Of the radius of the arrow's bar."""
+
+
+def shortened(path: FloatArray, by: float) -> FloatArray:
+    """A path (n, 3) without the last `by` metres of its length; two points at least."""
+    if by <= 0.0:
+        return path
+    steps = np.linalg.norm(np.diff(path, axis=0), axis=1)
+    along = np.concatenate([[0.0], np.cumsum(steps)])
+    end = max(along[-1] - by, 0.02 * along[-1])
+    cut = np.array([np.interp(end, along, path[:, axis]) for axis in range(3)])
+    return np.concatenate([path[along < end], cut[None]])
 
 
 def bone_colour(segment: str) -> palette.Colour:
@@ -80,7 +96,13 @@ class Scene:
         self._plotter.close()
 
     def render(
-        self, row: int, camera: Camera, *, exaggeration: float, marker_radius: float | None = None
+        self,
+        row: int,
+        camera: Camera,
+        *,
+        exaggeration: float,
+        marker_radius: float | None = None,
+        with_bones: bool = True,
     ) -> Image.Image:
         """The row's picture, ``SUPERSAMPLING`` times as large as the scene's size.
 
@@ -88,14 +110,51 @@ class Scene:
         ----------
         marker_radius : float, optional
             m; by default a fixed share of what the picture spans.
+        with_bones : bool
+            False leaves the bones out, but not their shadow.
         """
         markers = place_markers(self.motion, row, exaggeration=exaggeration)
         self._move_bones(row)
+        if not with_bones:
+            for actor in self._bone_actors:
+                actor.visibility = False
         self._draw_markers(markers, marker_radius or MARKER_SIZE * camera.visible_height())
         self._draw_floor(row, camera, markers)
         self._aim(camera)
         self._plotter.render()
         return Image.fromarray(self._plotter.screenshot(return_img=True))
+
+    def draw_balls(self, name: str, centres: FloatArray, radius: float, colour: Any) -> None:
+        """Balls at centres (n, 3) m in place of those last drawn under that name; none where n is 0."""
+        self._balls(name, centres, radius, colour)
+
+    def draw_paths(
+        self, name: str, paths: Sequence[FloatArray], radius: float, colour: Any, *, heads: bool
+    ) -> None:
+        """Round bars along paths (n, 3) m, with arrowheads at their ends or without.
+
+        They stand in place of those last drawn under that name.
+        """
+        self._plotter.remove_actor(name, render=False)
+        if not paths:
+            return
+        head = ARROWHEAD_LENGTH * radius if heads else 0.0
+        parts = []
+        for path in paths:
+            line = self._pyvista.MultipleLines(shortened(path, 0.8 * head))
+            parts.append(line.tube(radius=radius, n_sides=14))
+            if heads:
+                tangent = path[-1] - shortened(path, head)[-1]
+                cone = self._pyvista.Cone(
+                    center=path[-1] - 0.5 * head * unit(tangent),
+                    direction=unit(tangent),
+                    height=head,
+                    radius=ARROWHEAD_RADIUS * radius,
+                    resolution=28,
+                )
+                parts.append(cone.compute_normals(split_vertices=True, feature_angle=50))
+        mesh = self._pyvista.merge(parts)
+        self._show(name, mesh, color=colour, interpolation="Phong", **MARKER_LOOK)
 
     def _open_window(self) -> Any:
         size = [SUPERSAMPLING * side for side in self.size]

@@ -11,8 +11,10 @@ from typing import TYPE_CHECKING, Any
 from condyle.checking import CoordinateReport, ModelReport
 from condyle.model.growth import sized_lengths
 from condyle.pipeline import SizedSubject, SolvedTrial
+from condyle.placement_sheet import sheet_lines
 from condyle.recording.describing import RecordingReport, report_lines
 from condyle.screen import progress, say, show_findings, show_json, show_table
+from condyle.solver.backends import backend
 from condyle.solver.fit_report import CAUTION
 from condyle.solver.quality import Finding, error_summary
 
@@ -50,6 +52,15 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
     if as_json:
         show_json(report.as_dict())
         return DONE
+    if report.picture:
+        say(report.picture)
+    if report.marker_list is not None:
+        for line in sheet_lines(report.marker_list, model=report.name):
+            say(line)
+        say("")
+        say(CAUTION)
+    if report.picture or report.marker_list is not None:
+        return DONE
     say(f"{report.name}{' (sized to a person)' if report.sized else ''}: {report.about}")
     for depth, segment, joint, kind in report.tree:
         markers = report.markers[segment]
@@ -76,6 +87,8 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
         say(remark)
     for first, second, correlation in report.pairs:
         say(f"hardly told apart: {first} and {second} (correlation {correlation:+.2f})")
+    for region in report.singular:
+        say(region.said)
     if report.unseen:
         say(
             f"not determined by any marker: {', '.join(report.unseen)} (such a coordinate stays "
@@ -106,6 +119,7 @@ def show_subject(made: SizedSubject, *, as_json: bool) -> int:
     """What a calibration found."""
     found = made.calibration
     lengths = sized_lengths(found.skeleton)
+    metres = {c.name for c in found.skeleton.coordinates if c.unit == "m"}
     placed = [m for m in found.markers if m.departure is not None]
     rms = math.sqrt(
         sum(sum(d * d for d in m.departure or ()) for m in placed) / max(len(placed), 1)
@@ -119,7 +133,7 @@ def show_subject(made: SizedSubject, *, as_json: bool) -> int:
                 "lengths": lengths,
                 "factors": {name: asdict(size) for name, size in found.skeleton.sizes.items()},
                 "posture": {
-                    name: value if name.startswith("pelvis_") else math.degrees(value)
+                    name: value if name in metres else math.degrees(value)
                     for name, value in found.posture.items()
                 },
                 "markers": [asdict(marker) for marker in found.markers],
@@ -161,6 +175,8 @@ def show_solved(run: Callable[[Watch], list[SolvedTrial]], *, as_json: bool) -> 
         for trial in solved:
             say(trial_line(trial))
             show_findings(trial.findings)
+        if backend().remark:
+            say(backend().remark)
         say(CAUTION)
     return max(status_of(trial.findings) for trial in solved)
 

@@ -1,7 +1,7 @@
 """A model looked at before any recording: its tree, its coordinates, what its markers can tell.
 
 What the markers tell is judged in `solver.telling`, with every marker of the model or with those that
-a recording really has.
+a recording really has; where angles cannot be told apart at all, in `solver.singular_regions`.
 """
 
 from __future__ import annotations
@@ -25,9 +25,11 @@ from condyle.model.skeleton import (
     Skeleton,
     Spherical,
 )
+from condyle.placement_sheet import MarkerPlacement, placement_sheet
 from condyle.recording import read_label_map, read_recording
 from condyle.recording.recording import is_seen
 from condyle.solver.matching import match_markers
+from condyle.solver.singular_regions import SingularRegion, said, singular_regions
 from condyle.solver.telling import Telling, tell
 
 
@@ -49,6 +51,23 @@ class CoordinateReport:
 
 
 @dataclass(frozen=True, slots=True)
+class SingularReport:
+    """Near `at` (deg) of `middle`, to `within` (deg), `first` and `third` cannot be told apart.
+
+    `stays_told` is the reported number to read there, None where there is none; `said` all in words.
+    """
+
+    joint: str
+    first: str
+    third: str
+    middle: str
+    at: tuple[float, ...]
+    within: float
+    stays_told: str | None
+    said: str
+
+
+@dataclass(frozen=True, slots=True)
 class ModelReport:
     """A model in short.
 
@@ -61,6 +80,9 @@ class ModelReport:
     unseen : coordinates and angles that the markers cannot tell
     remedies : such a name -> the segment on which markers would tell it
     pairs : (name, name, correlation) of coordinates that are hardly told apart
+    singular : where angles of a joint cannot be told apart, whatever the markers
+    marker_list : the placement sheet, where asked for
+    picture : the picture that was drawn, where asked for
     mesh_remarks : what is odd about the model's meshes
     """
 
@@ -76,6 +98,9 @@ class ModelReport:
     remedies: dict[str, str]
     pairs: tuple[tuple[str, str, float], ...]
     mesh_remarks: tuple[str, ...]
+    singular: tuple[SingularReport, ...] = ()
+    marker_list: tuple[MarkerPlacement, ...] | None = None
+    picture: str | None = None
 
     def as_dict(self) -> dict[str, Any]:
         """Plain values, for JSON."""
@@ -87,6 +112,8 @@ def check(
     *,
     recording: str | Path | None = None,
     labels: str | Path | None = None,
+    picture: str | Path | None = None,
+    marker_list: bool = False,
 ) -> ModelReport:
     """Read a model and say what it holds and what its markers can tell.
 
@@ -95,14 +122,22 @@ def check(
     recording : a file
         Only the markers that it has at any time count.
     labels : a file ``{model marker: label in the recording}``
+    picture : a file ending in .png, .jpg or another kind of picture
+        Draws the segments, the joint axes with their positive sense, landmarks and markers.
+    marker_list : bool
+        Whether to make the placement sheet too.
 
     Raises
     ------
     CondyleError
-        With every mistake of the model, or what is wrong with the recording.
+        With every mistake of the model, or what is wrong with the recording, or where no picture can
+        be drawn here; nothing is written then.
     """
     skeleton = load_skeleton(model)
-    told = tell(skeleton, present=_present(skeleton, recording, labels))
+    present = _present(skeleton, recording, labels)
+    told = tell(skeleton, present=present)
+    if picture is not None:
+        _draw(skeleton, Path(picture))
     return ModelReport(
         name=skeleton.name,
         about=skeleton.about,
@@ -123,6 +158,29 @@ def check(
         remedies=dict(told.remedies),
         pairs=told.pairs,
         mesh_remarks=tuple(mesh_remarks(grown_shapes(skeleton))),
+        singular=tuple(_singular(region) for region in singular_regions(skeleton)),
+        marker_list=placement_sheet(skeleton, present=present) if marker_list else None,
+        picture=None if picture is None else str(picture),
+    )
+
+
+def _draw(skeleton: Skeleton, path: Path) -> None:
+    from condyle.viz import draw_model_sheet, picture_kind, save_picture  # only to draw
+
+    picture_kind(path)
+    save_picture(draw_model_sheet(skeleton), path)
+
+
+def _singular(region: SingularRegion) -> SingularReport:
+    return SingularReport(
+        joint=region.joint,
+        first=region.first,
+        third=region.third,
+        middle=region.middle,
+        at=tuple(round(float(np.degrees(value)), 6) for value in region.at),
+        within=round(float(np.degrees(region.within)), 6),
+        stays_told=region.stays_told,
+        said=said(region),
     )
 
 

@@ -97,13 +97,23 @@ def check(
         typer.Option("--recording", help="Judge only the markers that this file has."),
     ] = None,
     labels: Labels = None,
+    picture: Annotated[
+        Path | None,
+        typer.Option("--picture", help="FILE.png: draw the model, its joint axes and markers."),
+    ] = None,
+    marker_list: Annotated[
+        bool, typer.Option("--marker-list", help="Print a placement sheet of the markers instead.")
+    ] = False,
     json: Json = False,
 ) -> int:
     """Read a MODEL: its tree, coordinates, markers and what they can tell, or every mistake."""
     from condyle.answers import show_model
     from condyle.checking import check as run
 
-    return show_model(run(model, recording=recording, labels=labels), as_json=json)
+    report = run(
+        model, recording=recording, labels=labels, picture=picture, marker_list=marker_list
+    )
+    return show_model(report, as_json=json)
 
 
 @app.command(epilog="Example: condyle recording walk.c3d")
@@ -167,8 +177,12 @@ def solve(
     up: Up = None,
     no_smooth: Annotated[
         bool,
-        typer.Option("--no-smooth", help="Each frame by itself (so far the only way)."),
+        typer.Option("--no-smooth", help="Each frame by itself, without rates."),
     ] = False,
+    loss: Annotated[
+        str,
+        typer.Option("--loss", help="squares; huber or geman_mcclure if some markers are wrong."),
+    ] = "squares",
     json: Json = False,
 ) -> int:
     """Fit the joint coordinates of every frame of the TRIALS; write one folder of results each."""
@@ -180,6 +194,8 @@ def solve(
             subject,
             trials,
             output,
+            smooth=not no_smooth,
+            loss=loss,
             labels=labels,
             units=units,
             up=up,

@@ -20,6 +20,7 @@ from condyle.recording import read_recording
 from condyle.recording.describing import RecordingReport, describe
 from condyle.recording.labels import match_labels, read_label_map, write_label_map
 from condyle.recording.recording import Recording
+from condyle.solver.backends import backend
 from condyle.solver.calibration import calibrate as calibrate_skeleton
 from condyle.solver.draft_map import draft_labels
 from condyle.solver.frame_problem import SkeletonFunctions
@@ -27,6 +28,7 @@ from condyle.solver.matching import match_markers
 from condyle.solver.quality import Finding, calibration_findings, trial_findings
 from condyle.solver.result_files import load_motion, save_trial
 from condyle.solver.results import Calibration, TrialFit
+from condyle.solver.robust_loss import LOSSES, Loss
 from condyle.solver.trial_fit import clipped, fit_trial
 
 
@@ -129,7 +131,8 @@ def solve(
     trials: Sequence[str | Path],
     output: str | Path,
     *,
-    smooth: bool = False,
+    smooth: bool = True,
+    loss: str = "squares",
     labels: str | Path | None = None,
     units: str | None = None,
     up: str | None = None,
@@ -146,7 +149,8 @@ def solve(
     units : their unit of length, ``mm`` or ``m``; wins over what the files declare
     output : the folder that gets one folder a trial
     smooth : bool
-        Whether to estimate the trial as a whole; not available yet.
+        Whether each trial is one estimate, with rates and accelerations; else each frame is by itself.
+    loss : ``squares``, or ``huber`` or ``geman_mcclure`` where some markers are plainly wrong
     watch : callable, optional
         Told the trial's name and the share of its work done.
 
@@ -155,10 +159,7 @@ def solve(
     CondyleError
         If anything in the input is wrong. Every trial is read and matched before the first is fitted.
     """
-    if smooth:
-        raise CondyleError(
-            "a smoothed solution is not available in this version.\n  Leave smoothing out."
-        )
+    chosen_loss = _loss(loss)
     skeleton = load_skeleton(subject)
     label_map = _label_map(labels, skeleton)
     paths = [Path(trial) for trial in trials]
@@ -178,6 +179,8 @@ def solve(
             recording,
             up=up,
             labels=label_map,
+            smooth=smooth,
+            loss=chosen_loss,
             functions=functions,
             watch=None if watch is None else _watching(watch, path.stem),
         )
@@ -185,6 +188,7 @@ def solve(
         folder = Path(output) / path.stem
         seconds = perf_counter() - began
         origin = _origin(subject, skeleton, path, recording, seconds)
+        origin |= {"smoothed": fit.smoothing is not None, "loss": loss}
         save_trial(fit, skeleton, folder, findings=findings, origin=origin)
         solved.append(SolvedTrial(fit, folder, findings, seconds))
     return solved
@@ -251,6 +255,12 @@ def trial_folders(folder: Path) -> list[Path]:
 
 def _watching(watch: Callable[[str, float], None], name: str) -> Callable[[float], None]:
     return lambda share: watch(name, share)
+
+
+def _loss(name: str) -> Loss | None:
+    if name not in LOSSES:
+        raise CondyleError(f"there is no loss called {name!r}.\n  Choose {', '.join(LOSSES)}.")
+    return LOSSES[name]
 
 
 def _label_map(labels: str | Path | None, skeleton: Skeleton) -> Mapping[str, str] | None:
@@ -338,6 +348,6 @@ def _origin(
             "remarks": list(recording.remarks),
         },
         "versions": versions(),
-        "smoothed": False,
+        "backend": {"name": backend().name, "remark": backend().remark},
         "seconds": round(seconds, 3),
     }

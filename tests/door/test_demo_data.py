@@ -188,7 +188,8 @@ def test_the_recordings_have_gaps_and_a_stray_point_but_lose_nothing(study: Stud
         assert 0.2 < recording.present[:, stray].mean() < 0.8
         for segment in set(segment_of.values()):
             own = [i for i, name in enumerate(names) if segment_of[name] == segment]
-            assert seen[:, own].sum(axis=1).min() >= 2, segment
+            fewest = min(2, len(own) - 1)  # a clavicle or an ulna wears a single marker
+            assert seen[:, own].sum(axis=1).min() >= fewest, segment
 
 
 def test_skin_slides_most_on_the_thigh_and_not_at_all_in_the_mean_static() -> None:
@@ -218,7 +219,7 @@ def test_the_study_can_be_written_where_a_folder_can_be(study: Study, tmp_path: 
         *(p for t in (study.static, *study.trials) for p in (t.recording, t.truth)),
     ]
     assert all(path.is_file() for path in paths)
-    assert sum(path.stat().st_size for path in paths) < 1_500_000
+    assert sum(path.stat().st_size for path in paths) < 1_600_000
     occupied = tmp_path / "occupied"
     occupied.write_text("")
     with pytest.raises(CondyleError, match="occupied: cannot be written"):

@@ -17,8 +17,9 @@ from scipy.spatial.transform import Rotation
 from condyle.model.growth import sized_numbers
 from condyle.model.skeleton import Marker, Size, Skeleton
 from condyle.solver.cold_start import fit_cold
+from condyle.solver.damped_step import bounded_step, solve_masked
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
-from condyle.solver.least_squares import Bounds, Solution, bounded_step, minimise, solve_masked
+from condyle.solver.least_squares import Bounds, Solution, minimise
 from condyle.solver.posture import Posture, inverse_right_jacobian
 
 FloatArray = NDArray[np.float64]

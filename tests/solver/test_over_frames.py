@@ -11,7 +11,7 @@ import pytest
 
 from condyle.model.growth import sized_numbers
 from condyle.solver.frame_problem import SkeletonFunctions
-from condyle.solver.over_frames import BLOCK_FRAMES, Replay
+from condyle.solver.over_frames import BLOCK_FRAMES, WORTH_A_BLOCK, Replay, ReplayOrMachine
 from condyle.solver.posture import Posture
 
 OPERATIONS: dict[str, Callable[[Any, Any], Any]] = {
@@ -138,3 +138,16 @@ def test_an_operation_without_counterpart_is_refused() -> None:
     x = ca.SX.sym("x")
     with pytest.raises(NotImplementedError):
         Replay(ca.Function("f", [x], [ca.erf(x)]))
+
+
+LEFT_OVER = (1, WORTH_A_BLOCK - 1, WORTH_A_BLOCK, BLOCK_FRAMES)
+
+
+@pytest.mark.parametrize("frames", [*LEFT_OVER, *(BLOCK_FRAMES + left for left in LEFT_OVER)])
+def test_what_is_replayed_and_what_casadi_evaluates_join_without_a_seam(frames: int) -> None:
+    x, p = ca.SX.sym("x", 2), ca.SX.sym("p")
+    function = ReplayOrMachine(ca.Function("f", [x, p], [p * x, ca.sumsqr(x)]))
+    points = np.random.default_rng(frames).normal(size=(frames, 2))
+    product, squares = function(points, np.array([3.0]))
+    np.testing.assert_array_equal(product, 3 * points)
+    np.testing.assert_allclose(squares[:, 0], (points**2).sum(axis=1), rtol=1e-15)

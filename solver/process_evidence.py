@@ -1,0 +1,207 @@
+"""How much of a trial is noise and how much is movement, read from the trial itself.
+
+Each freedom's frame-by-frame estimates y_k, with variance kappa^2 C_k, are a process with white
+p-th differences plus white noise. With W = diag(1 / C) and A(r) = W + r D'D the marginal likelihood,
+kappa profiled out, is
+
+    -2 log L = (N - p) log(RSS / (N - p)) + log det A(r) - (N - p) log r,   RSS = min (y - q)'W(y - q) + r |Dq|^2
+
+(Wahba 1985, Ann Stat 13:1378; Kitagawa & Gersch 1996, Smoothness Priors Analysis of Time Series).
+It is maximised over r by a search in one dimension; kappa^2 = RSS / (N - p).
+
+The order is four, white snap, unless three explains the trial better by far. The likelihood alone would
+take three almost always: it weighs the strong slow part of a spectrum, where any order follows the
+data, while acceleration rests on the weak fast part, which falls off more steeply in movement. On
+the one measured acceleration at hand (Pezzack, Norman & Winter 1977, J Biomech 10:377) order four
+errs by 4.3 rad/s2 and order three by 5.1, though the likelihood prefers three by 0.04 a frame; on
+movements of known truth likewise (`benchmarks/trial_estimates.py`). Impacts in noisy recordings prefer
+three by 0.08 and more, and there it is right.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import lapack
+from scipy.optimize import minimize_scalar
+
+from condyle.solver.process_prior import difference_weights
+
+FloatArray = NDArray[np.float64]
+BoolArray = NDArray[np.bool_]
+
+ORDERS = (3, 4)
+ROUGHER = 0.08
+"""Log likelihood per frame by which order three must explain a trial better to be taken."""
+MOST_CUTOFF = 0.45
+"""Share of the frame rate below which lies the frequency at which movement and noise are taken to be
+equal."""
+MOST_RATIO = 1e9
+"""r in units of the frames' own precision. Beyond it rounding in r D'Dq, some 1e-14 r of q, is no longer
+small beside the noise; at 100 frames a second this is a cut-off of 0.5 Hz (order 3) or 1.2 Hz."""
+STILL = 1.0
+"""In log r: nearer to the greatest one than this, a freedom is said to stand still."""
+COARSE_RATIOS, RATIO_TOLERANCE = 9, 0.05
+"""Places of the first search in log r, and how far the second goes: r within 5 per cent."""
+FEWEST_FRAMES = 20
+"""Below this nothing can be read from a series, and it is not smoothed."""
+
+
+@dataclass(frozen=True, slots=True)
+class Evidence:
+    """What the series of a trial say.
+
+    Attributes
+    ----------
+    order : int
+        Of the differences that are taken to be white.
+    ratio : (freedoms,)
+        r: prior precision of a difference in the units of the frames' cost; 0 where not smoothed.
+    kappa : (freedoms,)
+        White noise as a share of the markers' sd, as seen in each freedom.
+    moving : (freedoms,) bool
+        Whether there is more movement in it than the smoothest process that is tried.
+    """
+
+    order: int
+    ratio: FloatArray
+    kappa: FloatArray
+    moving: BoolArray
+
+
+def weigh(
+    series: FloatArray,
+    variance: FloatArray,
+    seen: BoolArray,
+    *,
+    least_kappa: float,
+) -> Evidence:
+    """Order, process and noise of a trial.
+
+    Parameters
+    ----------
+    series : (frames, freedoms)
+        Frame-by-frame estimates without jumps of whole turns.
+    variance : (frames, freedoms)
+        Theirs, were the noise the markers' whole sd.
+    seen : (frames, freedoms) bool
+        Where there is an estimate.
+    least_kappa : float
+        A floor: no camera is better than that.
+    """
+    rough, fine = (_of_order(series, variance, seen, p, least_kappa) for p in ORDERS)
+    # A freedom that stands still is as smooth as may be in any order, and decides nothing.
+    moving = rough[1].moving & fine[1].moving
+    gain = (rough[0] - fine[0])[moving].sum() / max(int(seen[:, moving].sum()), 1)
+    return rough[1] if gain > ROUGHER else fine[1]
+
+
+def _of_order(
+    series: FloatArray, variance: FloatArray, seen: BoolArray, order: int, least_kappa: float
+) -> tuple[FloatArray, Evidence]:
+    """Log likelihoods (freedoms,), and what they are the greatest of."""
+    freedoms = series.shape[1]
+    ratio, kappa = np.zeros(freedoms), np.full(freedoms, least_kappa)
+    likelihood, moving = np.zeros(freedoms), np.zeros(freedoms, dtype=bool)
+    for d in np.flatnonzero(seen.sum(axis=0) >= FEWEST_FRAMES):
+        one = _Series(series[:, d], variance[:, d], seen[:, d], order)
+        ratio[d], kappa[d], likelihood[d], moving[d] = one.best(least_kappa)
+    return likelihood, Evidence(order, ratio, kappa, moving)
+
+
+def smoothed(series: FloatArray, precision: FloatArray, ratio: float, order: int) -> FloatArray:
+    """Series (frames, m) smoothed one by one: min of (y - q)'W(y - q) + r |Dq|^2.
+
+    Parameters
+    ----------
+    precision : (frames,)
+        W; 0 where a frame says nothing.
+    ratio : float
+        r.
+    """
+    band = ratio * _squares_band(order, len(series))
+    band[0] += precision
+    _, found, info = lapack.dpbsv(band, precision[:, None] * series, lower=1, overwrite_ab=1)
+    return np.asarray(found) if info == 0 else series
+
+
+class _Series:
+    """One freedom's estimates and the marginal likelihood of its noise and process."""
+
+    def __init__(self, y: FloatArray, variance: FloatArray, seen: BoolArray, order: int) -> None:
+        self._order = order
+        precision = np.where(seen, 1 / np.where(seen, variance, 1.0), 0.0)
+        self._scale = float(np.median(precision[seen]))
+        self._precision = precision / self._scale
+        # A constant costs the process nothing: without it RSS loses fewer digits.
+        self._y = np.where(seen, y - np.median(y[seen]), 0.0)
+        self._free = int(seen.sum()) - order
+        self._squares = _squares_band(order, len(y))
+        spread = max(float(np.var(self._y[seen])), np.finfo(float).tiny)
+        self._constant = (
+            self._free * np.log(2 * np.pi)
+            - _log_determinant(order, len(y))
+            + order * np.log(2 * np.pi * len(y) * spread)
+        )
+
+    def _at(self, log_ratio: float) -> tuple[float, float]:
+        """RSS and log det A - (N - p) log r, precisions in units of their median."""
+        band = np.exp(log_ratio) * self._squares
+        band[0] += self._precision
+        rhs = self._precision * self._y
+        factor, solution, info = lapack.dpbsv(band, rhs[:, None], lower=1, overwrite_ab=1)
+        if info != 0:
+            return np.inf, np.inf
+        x = solution[:, 0]
+        rss = float(self._precision @ (self._y - x) ** 2)
+        rss += float(np.exp(log_ratio) * (np.diff(x, self._order) ** 2).sum())
+        determinant = 2 * float(np.log(factor[0]).sum()) - (len(self._y) - self._order) * log_ratio
+        return max(rss, np.finfo(float).tiny), determinant
+
+    def best(self, least_kappa: float) -> tuple[float, float, float, bool]:
+        """Give r, kappa and the log likelihood at the maximum, and whether anything moves."""
+        low = -2 * self._order * np.log(2 * np.sin(np.pi * MOST_CUTOFF))
+        high = np.log(MOST_RATIO)
+        floor = least_kappa**2 / self._scale
+
+        def twice_minus(log_ratio: float) -> float:
+            rss, determinant = self._at(log_ratio)
+            noise = max(rss / self._free, floor)
+            return float(self._free * np.log(noise) + rss / noise + determinant + self._constant)
+
+        coarse = np.linspace(low, high, COARSE_RATIOS)
+        at = int(np.argmin([twice_minus(x) for x in coarse]))
+        around = (coarse[max(at - 1, 0)], coarse[min(at + 1, len(coarse) - 1)])
+        found = minimize_scalar(
+            twice_minus, bounds=around, method="bounded", options={"xatol": RATIO_TOLERANCE}
+        )
+        noise = max(self._at(found.x)[0] / self._free, floor)
+        kappa = np.sqrt(noise * self._scale)
+        moving = found.x < high - STILL
+        return float(np.exp(found.x)) * self._scale, float(kappa), -float(found.fun) / 2, moving
+
+
+def _squares_band(order: int, frames: int) -> FloatArray:
+    """The lower band of D'D, (order + 1, frames)."""
+    c = difference_weights(order)
+    band = np.zeros((order + 1, frames), order="F")
+    for later in range(order + 1):
+        for earlier in range(later + 1):
+            band[later - earlier, earlier : earlier + frames - order] += c[later] * c[earlier]
+    return band
+
+
+def _log_determinant(order: int, frames: int) -> float:
+    """Log det(D D').
+
+    The rows of D below the first `order` rows of the identity make a triangle of ones, so det(D D')
+    is 1 / det(first rows of an orthonormal basis of the polynomials)^2.
+    """
+    x = np.linspace(-1.0, 1.0, frames)
+    R = np.linalg.qr(np.vander(x, order, increasing=True), mode="r")
+    of_basis = float(np.log(np.abs(np.diag(R))).sum())
+    # Vandermonde's determinant of the first places.
+    apart = [np.log(x[j] - x[i]) for i in range(order) for j in range(i + 1, order)]
+    return 2 * (of_basis - float(np.sum(apart)))

@@ -1,0 +1,219 @@
+"""The whole trial as one estimate: frames' costs and the process between them, minimised together.
+
+    F(q) = sum over k of c_k(q_k) + prior(q),
+
+c_k being what a frame's own fit minimises (markers, ties, limits) and the prior that of
+`process_prior`. Newton's method on the block-banded system, with the limits met by a primal-dual
+active set, as in `least_squares`; one trial is one problem, so damping is one number.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from condyle.solver.block_banded import band_of_frames, factored, times, without
+from condyle.solver.frame_problem import FrameProblem
+from condyle.solver.least_squares import Bounds
+from condyle.solver.posture import Posture
+from condyle.solver.process_prior import ProcessPrior
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+BoolArray = NDArray[np.bool_]
+
+TOLERANCE = 1e-8
+"""Finished when the predicted gain, sqrt(2 gain), is below this share of sqrt(2 cost)."""
+MOST_ROUNDS = 60
+MOST_SET_CHANGES = 12
+ROUNDING = 1e-12
+LEAST_SHARE = 1e-8
+"""Eigenvalue of a frame's second derivative, scaled by its information, that counts as nothing."""
+LEAST_DAMPING, MOST_DAMPING = 1e-6, 1e8
+
+
+@dataclass(frozen=True, slots=True)
+class SmoothSolution:
+    """The minimum of F, with what proves it.
+
+    Attributes
+    ----------
+    posture : Posture
+    cost : (frames,)
+        Of each frame by itself, without the prior.
+    active : (frames, freedoms) int
+        -1 at a lower limit, +1 at an upper one, 0 free; pinned freedoms count as -1.
+    optimality : (frames,)
+        The projected gradient of F in standard deviations.
+    rounds : int
+    converged : bool
+    """
+
+    posture: Posture
+    cost: FloatArray
+    active: IntArray
+    optimality: FloatArray
+    rounds: int
+    converged: bool
+
+
+def minimise_trial(
+    problem: FrameProblem,
+    prior: ProcessPrior,
+    start: Posture,
+    bounds: Bounds,
+    *,
+    watch: Callable[[int], None] | None = None,
+) -> SmoothSolution:
+    """Minimise F from `start`, within `bounds`.
+
+    Parameters
+    ----------
+    watch : callable, optional
+        Told after each round how many were done.
+
+    Returns
+    -------
+    SmoothSolution
+        Not converging is a value in it, never an error.
+    """
+    here = bounds.inside(start)
+    point = _Point.at(problem, prior, here)
+    low, high = bounds.steps(here)
+    active = np.where(low >= high, -1, np.where((low >= 0) & (point.force < 0), -1, 0))
+    active = np.where((high <= 0) & (point.force > 0) & (active == 0), 1, active)
+    damping, exact, converged, rounds = 0.0, True, False, 0
+    band = point.band(problem, prior, exact=exact)
+    while rounds < MOST_ROUNDS and damping < MOST_DAMPING and not converged:
+        rounds += 1
+        low, high = bounds.steps(here)
+        found = _bounded_step(band, damping, point.force, low, high, active)
+        if found is None:
+            # Not near a minimum: where a frame's own second derivative bends down, turn it up.
+            if exact:
+                exact = False
+                band = point.band(problem, prior, exact=False)
+            else:
+                damping = max(10 * damping, LEAST_DAMPING)
+            continue
+        step, active = found
+        gain = float(step @ point.force.ravel() - step @ times(band, step) / 2)
+        there = bounds.inside(here.after(step.reshape(point.force.shape)))
+        new = _Point.at(problem, prior, there)
+        small = np.sqrt(2 * abs(gain)) <= TOLERANCE * np.sqrt(2 * point.cost)
+        ratio = (point.cost - new.cost) / gain if gain > 0 else -1.0
+        if new.cost <= point.cost * (1 + ROUNDING):
+            here, point, exact = there, new, True
+            converged = bool(small) and damping <= LEAST_DAMPING
+            if ratio > 0.5 or small:
+                damping = damping / 10 if damping > LEAST_DAMPING else 0.0
+            if not converged:
+                band = point.band(problem, prior, exact=True)
+        elif small:
+            converged = damping <= LEAST_DAMPING
+            damping /= 10
+        else:
+            damping = max(10 * damping, LEAST_DAMPING)
+        if watch is not None:
+            watch(rounds)
+    return SmoothSolution(
+        here, point.frame_costs, active, _optimality(point, prior, bounds), rounds, converged
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class _Point:
+    """F at one posture: its value, minus its gradient, and what its second derivative is made of."""
+
+    posture: Posture
+    information: FloatArray
+    frame_costs: FloatArray
+    cost: float
+    force: FloatArray
+    turns: FloatArray
+
+    @classmethod
+    def at(cls, problem: FrameProblem, prior: ProcessPrior, posture: Posture) -> _Point:
+        H, g, costs = problem(posture, np.arange(len(posture)))
+        differences, turns = prior.residuals(posture)
+        cost = costs.sum() + (prior.weights() * differences**2).sum() / 2
+        return cls(posture, H, costs, float(cost), g + prior.force(differences, turns), turns)
+
+    def band(self, problem: FrameProblem, prior: ProcessPrior, *, exact: bool) -> FloatArray:
+        """The second derivative of F, or what makes it positive definite."""
+        H = self.information - problem.curvature(self.posture, np.arange(len(self.posture)))
+        if not exact:
+            H = _turned_up(H, self.information)
+        return system_band(H, prior, self.turns)
+
+
+def _turned_up(H: FloatArray, information: FloatArray) -> FloatArray:
+    """(frames, n, n) Blocks whose negative eigenvalues, scaled by the information, are made positive."""
+    diagonal = np.einsum("nii->ni", information)
+    root = np.sqrt(np.maximum(diagonal, LEAST_SHARE * diagonal.max(axis=1, keepdims=True)))
+    root = np.where(root > 0, root, 1.0)
+    values, vectors = np.linalg.eigh(H / root[:, :, None] / root[:, None, :])
+    positive = np.maximum(np.abs(values), LEAST_SHARE)
+    blocks = np.einsum("nik,nk,njk->nij", vectors, positive, vectors, optimize=True)
+    return np.asarray(blocks * root[:, :, None] * root[:, None, :])
+
+
+def system_band(H: FloatArray, prior: ProcessPrior, turns: FloatArray) -> FloatArray:
+    """The band of frames' blocks H (frames, n, n) with the prior's J'J."""
+    reach = prior.order * H.shape[1] + (2 if turns.shape[2] else 0)
+    band = band_of_frames(H, reach)
+    prior.add_to_band(band, turns)
+    return band
+
+
+def _bounded_step(
+    band: FloatArray,
+    damping: float,
+    force: FloatArray,
+    low: FloatArray,
+    high: FloatArray,
+    active: IntArray,
+) -> tuple[FloatArray, IntArray] | None:
+    """Minimise s'As/2 - f's with low <= s <= high; None where A is not positive definite."""
+    f, lo, hi = force.ravel(), low.ravel(), high.ravel()
+    a = active.ravel().copy()
+    if damping:
+        band = band.copy(order="F")
+        band[0] += damping * np.maximum(band[0], 1e-12 * band[0].max())
+    fixed_for_good = lo >= hi
+    step = np.zeros_like(f)
+    for _ in range(MOST_SET_CHANGES):
+        held = a != 0
+        at = np.where(a < 0, lo, np.where(a > 0, hi, 0.0))
+        factor = factored(without(band, held))
+        if factor is None:
+            return None
+        rhs = np.where(held, at, f - times(band, at) if at.any() else f)
+        step = factor.solve(rhs)
+        push = f - times(band, step)
+        outside = np.where(step < lo, -1, np.where(step > hi, 1, 0))
+        kept = np.where((push * a > 0) | fixed_for_good, a, 0)
+        new = np.where(held, kept, outside)
+        changed = bool((new != a).any())
+        a = new
+        if not changed:
+            break
+    return np.clip(step, lo, hi), a.reshape(force.shape)
+
+
+def _optimality(point: _Point, prior: ProcessPrior, bounds: Bounds) -> FloatArray:
+    """(frames,) |force| over the root of the second derivative's diagonal, relative to sqrt(2 cost).
+
+    Components that push against a limit do not count; the cost is the trial's mean per frame.
+    """
+    low, high = bounds.steps(point.posture)
+    blocked = ((low >= 0) & (point.force < 0)) | ((high <= 0) & (point.force > 0))
+    diagonal = np.einsum("nii->ni", point.information)
+    ratio = np.maximum(diagonal, prior.ratio[None, :])
+    scaled = np.where(blocked, 0.0, np.abs(point.force))
+    scaled = scaled / np.sqrt(np.maximum(ratio, np.finfo(float).tiny))
+    share = max(np.sqrt(2 * point.cost / max(len(scaled), 1)), 1.0)
+    return np.asarray(scaled.max(axis=1, initial=0.0) / share)
