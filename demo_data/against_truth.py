@@ -91,11 +91,11 @@ def compare_with_truth(fit: TrialFit, truth: TrialTruth) -> tuple[AngleErrors, .
 
 
 def compare_lengths(skeleton: Skeleton, truth: PersonTruth) -> tuple[LengthError, ...]:
-    """Segment lengths of a sized skeleton beside the true ones."""
+    """Segment lengths of a sized skeleton beside the true ones; a segment without length is left out."""
     return tuple(
         LengthError(segment, MM_PER_M * length, MM_PER_M * truth.lengths[segment])
         for segment, length in sized_lengths(skeleton).items()
-        if segment in truth.lengths
+        if truth.lengths.get(segment, 0.0) > 0
     )
 
 

@@ -73,7 +73,10 @@ def write_truth(path: Path, truth: TrialTruth) -> None:
         columns[name] = np.rad2deg(values) if truth.units[name] == "rad" else values
     table = pd.DataFrame(columns)
     table.attrs["units"] = {n: {"rad": "deg"}.get(u, u) for n, u in truth.units.items()}
-    table.to_parquet(path, compression="zstd", index=False)
+    split = {name: "BYTE_STREAM_SPLIT" for name in truth.values}  # smooth curves pack by bytes
+    table.to_parquet(
+        path, compression="zstd", index=False, use_dictionary=False, column_encoding=split
+    )
 
 
 def read_truth(path: Path) -> TrialTruth:

@@ -40,10 +40,9 @@ def band_of_frames(H: FloatArray, width: int) -> FloatArray:
     """
     frames, n, _ = H.shape
     band = np.zeros((width + 1, frames * n), order="F")
-    for below in range(n):
-        diagonal = np.diagonal(H, -below, axis1=1, axis2=2)
-        for column in range(n - below):
-            band[below, column::n] = diagonal[:, column]
+    by_frame = band.reshape(width + 1, n, frames, order="F")
+    for column in range(n):
+        by_frame[: n - column, column] = H[:, column:, column].T
     return band
 
 

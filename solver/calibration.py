@@ -16,6 +16,7 @@ from condyle.model.errors import FitError
 from condyle.model.skeleton import Marker, Person, Skeleton
 from condyle.recording.recording import Recording, is_seen, mean_positions
 from condyle.recording.still import StillPart, still_part
+from condyle.solver.blas_threads import one_thread
 from condyle.solver.cold_start import fit_cold
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.least_squares import Bounds, Solution, minimise
@@ -31,11 +32,12 @@ from condyle.solver.posture import Posture
 from condyle.solver.reported import reported_values
 from condyle.solver.results import Calibration, PlacedMarker
 from condyle.solver.static_faults import check_sides
+from condyle.solver.subject_covariance import SubjectCovariance, entry_names, entry_values
 from condyle.solver.upright import Upright
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
-from condyle.solver.marker_placing import place_markers
+from condyle.solver.marker_placing import MarkerPlacing, place_markers
 from condyle.solver.sizing_functions import SizingFunctions
 from condyle.solver.sizing_problem import (
     MEASUREMENT_SD,
@@ -45,6 +47,7 @@ from condyle.solver.sizing_problem import (
 )
 
 
+@one_thread
 def calibrate(
     skeleton: Skeleton,
     static: Recording,
@@ -185,7 +188,8 @@ def _assembled(
     cov = covariance(H, free)[0]
     sizes = solution.posture.scalars[0, n : n + groups]
     sizes_sd = np.sqrt(np.diag(cov)[n : n + groups])
-    placed = place_markers(problem, solution.posture, cov, matched, still)
+    placing = place_markers(problem, solution.posture, cov, matched, still)
+    placed = placing.markers
     by_name = {marker.name: marker for marker in placed}
     stature, mass = person
     nan = float("nan")
@@ -220,6 +224,24 @@ def _assembled(
         cost=float(solution.cost[0]),
         converged=bool(solution.converged[0]),
         own_posture=own,
+        covariance=_joint_covariance(problem, sized, cov, placing),
+    )
+
+
+def _joint_covariance(
+    problem: SizingProblem, sized: Skeleton, cov: FloatArray, placing: MarkerPlacing
+) -> SubjectCovariance:
+    """Of ln of the size factors and the marker places together; the static's posture summed out."""
+    n, groups = problem.coordinates, problem.evaluator.groups
+    of_sizes = np.zeros((groups, problem.freedoms))
+    of_sizes[:, n : n + groups] = np.eye(groups)
+    rates = np.concatenate([of_sizes, placing.rates.reshape(-1, problem.freedoms)])
+    own = np.concatenate([np.zeros(groups), np.repeat(placing.variance, 3)])
+    return SubjectCovariance(
+        entry_names(sized),
+        entry_values(sized),
+        rates @ cov @ rates.T + np.diag(own),
+        "the calibration's covariance",
     )
 
 

@@ -61,6 +61,7 @@ def fit_report(
             if fit.at_limit[:, i].any()
         },
         "smoothing": _smoothing(fit),
+        "uncertainty": _uncertainty(fit),
         "freedoms": {"without_ties": fit.freedoms, "taken_by_ties": fit.freedoms_tied},
         "ties": {name: {"largest_error": error} for name, error in fit.tie_errors.items()},
         "coordinates_not_observed": dict(fit.not_observed),
@@ -69,7 +70,7 @@ def fit_report(
 
 
 def _smoothing(fit: TrialFit) -> dict[str, Any] | None:
-    """How the trial was estimated as a whole, and which part of each sd dominates."""
+    """How the trial was estimated as a whole."""
     smoothing = fit.smoothing
     if smoothing is None:
         return None
@@ -78,13 +79,21 @@ def _smoothing(fit: TrialFit) -> dict[str, Any] | None:
         "white_noise": smoothing.white_noise,
         "rounds": smoothing.rounds,
         "frames_bridged": dict(smoothing.bridged),
-        "uncertainty": {
+    }
+
+
+def _uncertainty(fit: TrialFit) -> dict[str, Any]:
+    """Which part of each number's variance comes from where."""
+    return {
+        "calibration": fit.calibration_how,
+        "parts": {
             name: {
-                "white_share": share,
-                "dominated_by": "white noise" if share > 0.5 else "what persists (skin, places)",
+                "white_noise": shares.white,
+                "markers_persisting": shares.persisting,
+                "calibration": shares.calibration,
+                "dominated_by": shares.dominant(),
             }
-            for name, share in smoothing.white_share.items()
-            if np.isfinite(share)
+            for name, shares in fit.doubts.items()
         },
     }
 

@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.solver.blas_threads import one_thread
 from condyle.solver.cold_start import fit_cold
 from condyle.solver.cone_limits import at_limit as ball_at_limit
 from condyle.solver.frame_problem import FrameProblem
@@ -55,6 +56,7 @@ class FrameFits:
         return self.solution.posture
 
 
+@one_thread
 def fit_frames(
     problem: FrameProblem, *, seed: int = 0, watch: Callable[[float], None] | None = None
 ) -> FrameFits:

@@ -7,6 +7,8 @@ the measurement sd; their covariance follows from that of posture and sizes.
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -23,13 +25,31 @@ from condyle.solver.sizing_problem import MEASUREMENT_SD, SizingProblem
 FloatArray = NDArray[np.float64]
 
 
+@dataclass(frozen=True, slots=True)
+class MarkerPlacing:
+    """Where markers sit.
+
+    Attributes
+    ----------
+    markers : PlacedMarkers
+    rates : (markers, 3, freedoms)
+        Derivative of every marker's place for a step of the sizing problem; 0 where not placed.
+    variance : (markers,) m^2
+        What the measurement itself adds per axis.
+    """
+
+    markers: tuple[PlacedMarker, ...]
+    rates: FloatArray
+    variance: FloatArray
+
+
 def place_markers(
     problem: SizingProblem,
     posture: Posture,
     cov: FloatArray,
     matched: MatchedMarkers,
     still: StillPart,
-) -> tuple[PlacedMarker, ...]:
+) -> MarkerPlacing:
     """Where each marker sits, from its residual: d = k R' (y - p), k = w^2 / (w^2 + s^2)."""
     skeleton, evaluator = problem.functions.skeleton, problem.evaluator
     n, groups = problem.coordinates, evaluator.groups
@@ -53,7 +73,8 @@ def place_markers(
     variance = np.einsum("mai,ij,maj->ma", rates, cov, rates, optimize=True)
     sd = np.sqrt(variance + (share * MEASUREMENT_SD**2)[:, None])
     departure = share[:, None] * away
-    return tuple(
+    seen = is_seen(measured)
+    placed = tuple(
         PlacedMarker(
             marker.name,
             as_vector(nominal[i] + departure[i]),
@@ -62,5 +83,10 @@ def place_markers(
             marker.placed_within if marker.at is not None else None,
         )
         for i, marker in enumerate(skeleton.markers)
-        if is_seen(measured[i])
+        if seen[i]
+    )
+    return MarkerPlacing(
+        placed,
+        np.where(seen[:, None, None], rates, 0.0),
+        np.where(seen, share * MEASUREMENT_SD**2, 0.0),
     )

@@ -5,7 +5,7 @@ The covariance of a step goes through the derivative of each reported number; no
 
 from __future__ import annotations
 
-import warnings
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import casadi as ca
@@ -27,7 +27,7 @@ from condyle.solver.frame_fit import FrameFits
 from condyle.solver.joint_angles import report_angles
 from condyle.solver.over_frames import over_frames
 from condyle.solver.posture import Posture, rotations
-from condyle.solver.results import Column
+from condyle.solver.results import Column, DoubtShares
 from condyle.solver.time_derivatives import derivatives
 from condyle.solver.trial_estimate import TrialEstimate
 
@@ -110,15 +110,33 @@ def report_derivatives(
     return rates, rates_sd, accelerations, accelerations_sd
 
 
-def white_share(kinematics: Kinematics, estimate: TrialEstimate) -> FloatArray:
-    """(columns,) Median share of white noise in the variance of each number; NaN where it has none."""
-    pieces = _pieces(kinematics, estimate.fits.posture)
-    white, whole = _sd(pieces, estimate.white), _sd(pieces, estimate.fits.covariance)
-    share = np.full(whole.shape, np.nan)
-    np.divide(white**2, whole**2, out=share, where=whole > 0)
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", RuntimeWarning)
-        return np.asarray(np.nanmedian(share, axis=0))
+def doubt_shares(
+    kinematics: Kinematics, posture: Posture, parts: Sequence[FloatArray | None]
+) -> dict[str, DoubtShares]:
+    """Median share of each part in the variance of each number that has one.
+
+    Parameters
+    ----------
+    parts : covariances (frames, freedoms, freedoms) of white noise, of what persists, of calibration
+        None: there is no such part.
+    """
+    pieces = _pieces(kinematics, posture)
+    names = [column.name for piece in pieces for column in piece.columns]
+    variances = [None if part is None else _sd(pieces, part) ** 2 for part in parts]
+    whole = np.sum([v for v in variances if v is not None], axis=0)
+    shares = np.full((len(parts), len(names)), np.nan)
+    for i, variance in enumerate(variances):
+        if variance is not None:
+            for j in range(len(names)):
+                known = whole[:, j] > 0
+                if known.any():
+                    shares[i, j] = np.median(variance[known, j] / whole[known, j])
+    told = np.isfinite(shares).any(axis=0)
+    return {
+        name: DoubtShares(*(float(share) for share in shares[:, j]))
+        for j, name in enumerate(names)
+        if told[j]
+    }
 
 
 def reported_values(

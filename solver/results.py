@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from condyle.model.meshes import GrownShape
 from condyle.model.skeleton import Skeleton, Vector
 from condyle.solver.posture import Posture
+from condyle.solver.subject_covariance import SubjectCovariance
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
@@ -125,17 +126,39 @@ class Smoothing:
         Of the differences taken to be white: 3 is white jerk, 4 white snap.
     white_noise : float
         m; the markers' white noise as read from the trial, the median over the freedoms.
-    white_share : column -> median share of white noise in its variance
-        The rest persists: skin and whatever else moves with the person.
     rounds : int
     bridged : column -> number of frames told from their neighbours alone
     """
 
     order: int
     white_noise: float
-    white_share: Mapping[str, float]
     rounds: int
     bridged: Mapping[str, int]
+
+
+@dataclass(frozen=True, slots=True)
+class DoubtShares:
+    """Which parts of a number's variance come from where: medians over the frames, together about 1.
+
+    Attributes
+    ----------
+    white : of noise that neighbouring frames make smaller; NaN where each frame is by itself
+    persisting : of the markers' remaining error, skin above all
+    calibration : of sizes and marker places
+    """
+
+    white: float
+    persisting: float
+    calibration: float
+
+    def dominant(self) -> str:
+        """The largest part, in words."""
+        parts = {
+            "white noise": self.white,
+            "markers, skin above all": self.persisting,
+            "calibration": self.calibration,
+        }
+        return max(parts, key=lambda name: np.nan_to_num(parts[name]))
 
 
 @dataclass(frozen=True, slots=True)
@@ -168,6 +191,10 @@ class TrialFit:
         Only where the trial was estimated as a whole.
     smoothing : Smoothing or None
         Likewise; None where each frame was fitted by itself.
+    doubts : column -> DoubtShares
+        Only numbers that have an sd.
+    calibration_how : str
+        What the part of calibration rests on.
     """
 
     motion: FittedMotion
@@ -189,6 +216,8 @@ class TrialFit:
     tie_errors: Mapping[str, float]
     derivatives: TimeDerivatives | None = None
     smoothing: Smoothing | None = None
+    doubts: Mapping[str, DoubtShares] = field(default_factory=dict)
+    calibration_how: str = ""
 
     def __post_init__(self) -> None:
         frames = len(self.motion.time)
@@ -249,6 +278,8 @@ class Calibration:
     converged : bool
     own_posture : Posture
         One frame: the static's.
+    covariance : SubjectCovariance
+        Of sizes and marker places together.
     """
 
     skeleton: Skeleton
@@ -265,3 +296,4 @@ class Calibration:
     cost: float
     converged: bool
     own_posture: Posture
+    covariance: SubjectCovariance

@@ -2,8 +2,7 @@
 
 Judged at postures drawn over the ranges: the sd that a frame's markers give each number, what they
 cannot tell in any posture, which pairs they can hardly tell apart, and on which segment three more
-markers would help. Postures of models with ties are drawn as if the ties were open; a tie's
-equations count there as they stand.
+markers would help. Postures of models with ties are closed before they are judged.
 """
 
 from __future__ import annotations
@@ -15,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.skeleton import LABORATORY, Marker, Skeleton
+from condyle.solver.blas_threads import one_thread
 from condyle.solver.cold_start import tightened
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.observability import covariance, undetermined
@@ -31,6 +31,8 @@ POSTURES = 25
 SHARE_OF_RANGE = 0.8
 UNLIMITED_HALF = 0.5
 """rad or m to either side of rest, for a coordinate without a range."""
+SDS_OPEN = 5.0
+"""A tie that misses by more of its sds than this is open."""
 HARDLY_APART = 0.95
 """|correlation| above which two numbers are called hardly told apart: each alone has more than three
 times the sd it would have if the other were known."""
@@ -58,6 +60,7 @@ class Telling:
     pairs: tuple[tuple[str, str, float], ...]
 
 
+@one_thread
 def tell(skeleton: Skeleton, *, present: BoolArray | None = None) -> Telling:
     """Judge what the markers of a model can tell.
 
@@ -171,13 +174,21 @@ def judged_postures(
 def _closed(problem: FrameProblem, postures: Posture) -> Posture:
     """The postures nearest by their markers in which the ties hold.
 
-    Where they do not, their equations point elsewhere, and would tell what no closed posture does.
+    Where they do not, their equations point elsewhere, and would tell what no closed posture does: one
+    that ranges keep open gives its place to one that closes.
     """
     if not len(problem.functions.ties):
         return postures
     seen = problem.functions.marker_positions(postures, problem.numbers)
     own = replace(problem, measured=seen)
-    return tightened(own, postures, own.bounds(), damping=1e-3).posture
+    found = tightened(own, postures, own.bounds(), damping=1e-3).posture
+    gaps, _ = own.functions.ties.residuals(found, own.numbers)
+    closed = (np.abs(gaps) < SDS_OPEN * own.functions.ties.sd).all(axis=1)
+    if not closed.any():
+        return found
+    rows = np.arange(len(found))
+    rows[~closed] = np.resize(np.flatnonzero(closed), int(np.sum(~closed)))
+    return found.take(rows)
 
 
 def drawn_postures(problem: FrameProblem, rng: np.random.Generator) -> Posture:

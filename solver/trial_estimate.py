@@ -12,11 +12,12 @@ does not move it, so windows that overlap by that much agree where they meet.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from condyle.solver.blas_threads import one_thread
 from condyle.solver.cone_limits import at_limit as ball_at_limit
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.frame_problem import FrameProblem
@@ -52,6 +53,8 @@ class TrialEstimate:
     white : (frames, freedoms, freedoms)
         The part of the covariance that smoothing makes smaller.
     rate_covariance, acceleration_covariance : (frames, freedoms, freedoms)
+    quickness : (1/s, 1/s^2)
+        How fast the trial goes beside how far: what an error that moves with it has as a rate.
     """
 
     fits: FrameFits
@@ -60,8 +63,20 @@ class TrialEstimate:
     white: FloatArray
     rate_covariance: FloatArray
     acceleration_covariance: FloatArray
+    quickness: tuple[float, float]
+
+    def with_doubt(self, covariance: FloatArray, varying: FloatArray) -> TrialEstimate:
+        """The estimate with more covariance (frames, freedoms, freedoms), a part of it moving along."""
+        speed, bend = self.quickness
+        return replace(
+            self,
+            fits=replace(self.fits, covariance=self.fits.covariance + covariance),
+            rate_covariance=self.rate_covariance + speed**2 * varying,
+            acceleration_covariance=self.acceleration_covariance + bend**2 * varying,
+        )
 
 
+@one_thread
 def smooth_trial(
     problem: FrameProblem,
     fits: FrameFits,
@@ -106,7 +121,7 @@ def smooth_trial(
         )
         if watch is not None:
             watch(inner.stop / len(plan))
-    return _joined(plan, parts)
+    return _joined(plan, parts, (speed, bend))
 
 
 @dataclass(frozen=True, slots=True)
@@ -174,7 +189,7 @@ def _told(plan: TrialPlan, found: SmoothSolution, covariance: FloatArray, kept: 
     )
 
 
-def _joined(plan: TrialPlan, parts: list[_Part]) -> TrialEstimate:
+def _joined(plan: TrialPlan, parts: list[_Part], quick: tuple[float, float]) -> TrialEstimate:
     fits = [part.fits for part in parts]
     solutions = [fit.solution for fit in fits]
     posture = Posture(
@@ -202,4 +217,5 @@ def _joined(plan: TrialPlan, parts: list[_Part]) -> TrialEstimate:
         np.concatenate([part.white for part in parts]),
         np.concatenate([part.rates for part in parts]),
         np.concatenate([part.accelerations for part in parts]),
+        quick,
     )

@@ -21,6 +21,8 @@ from condyle.model.growth import (
 from condyle.model.meshes import grown_shapes
 from condyle.model.skeleton import Skeleton
 from condyle.recording.recording import Recording, is_seen
+from condyle.solver.blas_threads import one_thread
+from condyle.solver.calibration_influence import CalibrationDoubt, calibration_doubt
 from condyle.solver.frame_fit import FrameFits, fit_frames
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.matching import (
@@ -30,9 +32,10 @@ from condyle.solver.matching import (
     match_markers,
     root_alignment,
 )
-from condyle.solver.reported import Reported, report, report_derivatives, white_share
+from condyle.solver.reported import Reported, doubt_shares, report, report_derivatives
 from condyle.solver.results import FittedMotion, Smoothing, TimeDerivatives, TrialFit
 from condyle.solver.robust_loss import Loss
+from condyle.solver.subject_covariance import SubjectCovariance
 from condyle.solver.time_derivatives import segment_velocities
 from condyle.solver.trial_estimate import TrialEstimate, smooth_trial
 from condyle.solver.upright import Upright
@@ -70,6 +73,7 @@ def clipped(recording: Recording, *, start: float | None, end: float | None) -> 
     )
 
 
+@one_thread
 def fit_trial(
     skeleton: Skeleton,
     recording: Recording,
@@ -80,6 +84,7 @@ def fit_trial(
     end: float | None = None,
     smooth: bool = False,
     loss: Loss | None = None,
+    subject: SubjectCovariance | None = None,
     functions: SkeletonFunctions | None = None,
     watch: Callable[[float], None] | None = None,
 ) -> TrialFit:
@@ -98,6 +103,8 @@ def fit_trial(
         Whether the trial is one estimate, with rates and accelerations; else each frame is by itself.
     loss : Loss, optional
         In place of the sum of squares: see `robust_loss`.
+    subject : SubjectCovariance, optional
+        What calibration does not know; it goes into every sd.
     functions : SkeletonFunctions, optional
         Of the same model, so that several trials share them.
     watch : callable, optional
@@ -119,10 +126,38 @@ def fit_trial(
     _check_enough(problem, recording, skeleton)
     fits = fit_frames(problem, watch=watch)
     estimate = smooth_trial(problem, fits, recording.rate) if smooth else None
-    if estimate is None:
-        return _assembled(skeleton, recording, matched, upright, problem, fits)
-    fit = _assembled(skeleton, recording, matched, upright, problem, estimate.fits)
-    return _with_motion(fit, problem, estimate, fits)
+    final = fits if estimate is None else estimate.fits
+    doubt = None
+    if subject is not None:
+        doubt = calibration_doubt(problem, final.posture, fits.covariance, subject)
+        if estimate is not None:
+            estimate = estimate.with_doubt(doubt.covariance, doubt.varying)
+        final = replace(final, covariance=final.covariance + doubt.covariance)
+    fit = _assembled(skeleton, recording, matched, upright, problem, final)
+    fit = _with_doubts(fit, problem, fits, estimate, doubt)
+    return fit if estimate is None else _with_motion(fit, problem, estimate, fits)
+
+
+def _with_doubts(
+    fit: TrialFit,
+    problem: FrameProblem,
+    frames: FrameFits,
+    estimate: TrialEstimate | None,
+    doubt: CalibrationDoubt | None,
+) -> TrialFit:
+    """The fit with which part of each variance comes from where."""
+    white = None if estimate is None else estimate.white
+    calibration = None if doubt is None else doubt.covariance
+    persisting, posture = frames.covariance, frames.posture
+    if estimate is not None:
+        rest = estimate.fits.covariance - estimate.white
+        persisting, posture = (
+            (rest if doubt is None else rest - doubt.covariance),
+            estimate.fits.posture,
+        )
+    shares = doubt_shares(problem.functions.kinematics, posture, (white, persisting, calibration))
+    how = "not known: no sizes or places of a calibration" if doubt is None else doubt.how
+    return replace(fit, doubts=shares, calibration_how=how)
 
 
 def frame_problem(
@@ -223,7 +258,6 @@ def _with_motion(
     linear, angular = segment_velocities(fit.motion.laboratory_from_segment, fit.rate)
     derived = report_derivatives(kinematics, estimate, told, fit.rate)
     names = [column.name for column in told.columns]
-    share = white_share(kinematics, estimate)
     bridged = (report(kinematics, frames).involved & ~told.involved).sum(axis=0)
     placed = problem.weights.max(axis=0)
     sd = float(np.median(1 / np.sqrt(placed[placed > 0])))
@@ -234,7 +268,6 @@ def _with_motion(
         smoothing=Smoothing(
             order=estimate.evidence.order,
             white_noise=float(np.median(estimate.evidence.kappa[smoothed])) * sd,
-            white_share=dict(zip(names, share.tolist(), strict=True)),
             rounds=estimate.rounds,
             bridged={n: int(c) for n, c in zip(names, bridged, strict=True) if c},
         ),

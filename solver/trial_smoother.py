@@ -25,8 +25,9 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
-TOLERANCE = 1e-8
-"""Finished when the predicted gain, sqrt(2 gain), is below this share of sqrt(2 cost)."""
+TOLERANCE, NEWTON_TOLERANCE = 1e-8, 1e-6
+"""Finished when the predicted gain, sqrt(2 gain), is below this share of sqrt(2 cost). A step with the exact
+second derivative squares it, so such a step need not be confirmed by another."""
 MOST_ROUNDS = 60
 MOST_SET_CHANGES = 12
 ROUNDING = 1e-12
@@ -103,7 +104,8 @@ def minimise_trial(
         gain = float(step @ point.force.ravel() - step @ times(band, step) / 2)
         there = bounds.inside(here.after(step.reshape(point.force.shape)))
         new = _Point.at(problem, prior, there)
-        small = np.sqrt(2 * abs(gain)) <= TOLERANCE * np.sqrt(2 * point.cost)
+        tolerance = NEWTON_TOLERANCE if exact else TOLERANCE
+        small = np.sqrt(2 * abs(gain)) <= tolerance * np.sqrt(2 * point.cost)
         ratio = (point.cost - new.cost) / gain if gain > 0 else -1.0
         if new.cost <= point.cost * (1 + ROUNDING):
             here, point, exact = there, new, True

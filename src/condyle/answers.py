@@ -248,8 +248,9 @@ def show_demo(run: Callable[[Watch], Demonstration], *, as_json: bool) -> int:
             [_angle_row(error) for error in errors],
         )
     say(
-        "The sd of a frame does not know yet what calibration does not know about sizes and marker "
-        "places: constant offsets lie outside it."
+        "Within one trial errors of calibration are constant: a share far from 95 % says that this person's "
+        "offset is small or large, not that the sd is wrong. Knees that turn about an axis of their own, as "
+        "this person's do, are outside what any sd here knows."
     )
     for path in made.pictures:
         say(str(path))

@@ -29,6 +29,12 @@ from condyle.solver.quality import Finding, calibration_findings, trial_findings
 from condyle.solver.result_files import load_motion, save_trial
 from condyle.solver.results import Calibration, TrialFit
 from condyle.solver.robust_loss import LOSSES, Loss
+from condyle.solver.subject_covariance import (
+    SubjectCovariance,
+    independent,
+    read_covariance,
+    write_covariance,
+)
 from condyle.solver.trial_fit import clipped, fit_trial
 
 
@@ -120,10 +126,17 @@ def calibrate(
             "static_sha256": file_hash(Path(static)),
             "still": [round(float(t), 6) for t in found.still],
             "up": found.up_how,
+            "covariance": covariance_file(output).name,
             "condyle": versions()["condyle"],
         },
     )
+    write_covariance(covariance_file(output), found.covariance)
     return SizedSubject(found, output, calibration_findings(found))
+
+
+def covariance_file(subject: Path) -> Path:
+    """Where the covariance of a subject's sizes and marker places stands: beside its file."""
+    return subject.with_name(f"{subject.stem}-covariance.npz")
 
 
 def solve(
@@ -171,6 +184,7 @@ def solve(
     for recording in recordings:
         match_markers(skeleton, recording, label_map)
     functions = SkeletonFunctions(skeleton)
+    known = _subject_covariance(subject, skeleton)
     solved = []
     for path, recording in zip(paths, recordings, strict=True):
         began = perf_counter()
@@ -181,6 +195,7 @@ def solve(
             labels=label_map,
             smooth=smooth,
             loss=chosen_loss,
+            subject=known,
             functions=functions,
             watch=None if watch is None else _watching(watch, path.stem),
         )
@@ -255,6 +270,17 @@ def trial_folders(folder: Path) -> list[Path]:
 
 def _watching(watch: Callable[[str, float], None], name: str) -> Callable[[float], None]:
     return lambda share: watch(name, share)
+
+
+def _subject_covariance(subject: str | Path, skeleton: Skeleton) -> SubjectCovariance | None:
+    """What calibration does not know of a sized subject; None of a model as it stands."""
+    if not skeleton.sizes:
+        return None
+    name = skeleton.calibration.get("covariance")
+    file = Path(subject).parent / str(name)
+    if name is None or not file.is_file():
+        return independent(skeleton)
+    return read_covariance(file, skeleton)[0]
 
 
 def _loss(name: str) -> Loss | None:

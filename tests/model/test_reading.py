@@ -79,12 +79,12 @@ def test_text_that_is_no_model_is_told_at_its_line(
 def test_anchors_that_explode_are_stopped_before_they_do(report: Callable[..., str]) -> None:
     lines = ["condyle: 1", "a0: &a0 [1, 1, 1, 1, 1, 1, 1, 1, 1, 1]"]
     lines += [f"a{i + 1}: &a{i + 1} [{', '.join([f'*a{i}'] * 10)}]" for i in range(9)]
-    began = time.perf_counter()
+    began = time.process_time()
     told = report("\n".join(lines)).splitlines()[0]
     assert (
         told == f"leg.yaml:6: more than {MOST_VALUES} values, those that aliases repeat included."
     )
-    assert time.perf_counter() - began < 2
+    assert time.process_time() - began < 2
 
 
 def test_a_file_that_is_not_there_is_told(report: Callable[..., str]) -> None:
@@ -126,8 +126,8 @@ def test_the_mistakes_of_a_long_model_come_in_well_under_a_second(
 ) -> None:
     marker = "  m{0}: {{segment: thih, at: [0, 0, {0}], sdd: 1}}\n"
     wrong = leg + "".join(marker.format(number) for number in range(470))
-    began = time.perf_counter()
+    began = time.process_time()
     told = report(wrong)
-    assert time.perf_counter() - began < 1.5  # 0.3 s when measured alone
+    assert time.process_time() - began < 1.5  # of the processor; 0.3 s when measured alone
     assert told.count("leg.yaml:") == 501
     assert "and 440 more mistakes" in told
