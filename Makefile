@@ -20,7 +20,10 @@ check: $(READY)
 
 bench: $(READY)
 	$(BIN)/python benchmarks/real_recordings.py
-	$(BIN)/python benchmarks/solver_speed.py
+	OPENBLAS_NUM_THREADS=1 $(BIN)/python benchmarks/solver_speed.py full_body 1000
+	OPENBLAS_NUM_THREADS=1 $(BIN)/python benchmarks/solver_speed.py lower_limbs 4500
+	$(BIN)/python benchmarks/solver_growth.py
+	$(BIN)/python benchmarks/trial_estimates.py
 
 format: $(READY)
 	$(BIN)/ruff format .

@@ -103,8 +103,8 @@ def unsized(skeleton: Skeleton) -> Skeleton:
 
 def _check_person(skeleton: Skeleton, stature: float | None, mass: float | None) -> None:
     for word, value, low, high in (
-        ("--stature", stature, 0.4, 2.8),
-        ("--mass", mass, 2.0, 400.0),
+        ("--stature", stature, 0.1, 2.8),
+        ("--mass", mass, 0.2, 400.0),
     ):
         if value is None:
             continue
@@ -115,7 +115,7 @@ def _check_person(skeleton: Skeleton, stature: float | None, mass: float | None)
             )
         if not low <= value <= high:
             raise FitError(
-                f"{word} {value:g} is no person's.\n  Give metres for a stature, kilograms for a "
+                f"{word} {value:g} is nobody's.\n  Give metres for a stature, kilograms for a "
                 f"mass, between {low:g} and {high:g}."
             )
 

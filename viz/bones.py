@@ -1,16 +1,16 @@
-"""Bones to draw: tapered limbs between the joint centres and landmarks a skeleton declares.
+"""Bones to draw: one surface per segment, in its frame, built once; frames only move it.
 
-A segment whose model names meshes is drawn by them. Otherwise nothing is measured on bone: the
-shapes only help the eye. Known ISB landmarks (Wu et al.
-2002) turn a segment into a pelvis, thigh, shank, foot or toes; any other segment becomes a shaft
-or a hub of shafts between its joint centres and landmarks, and one without either a small ball.
-One mesh per segment in the segment's frame, built once: frames only move it.
+A segment whose model names meshes is drawn by them. Else the landmarks of the trade that it carries
+(ISB names, Wu et al. 2002 and 2005) tell a bone of the package, which is stretched onto them;
+nothing is measured on bone, it only helps the eye. An animal's parts are made from their own
+landmarks. Any other segment becomes a shaft or a hub of shafts between its joint centres and
+landmarks, and one without either a small ball.
 """
 
 from __future__ import annotations
 
 import warnings
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -18,20 +18,26 @@ from numpy.typing import NDArray
 
 from condyle.model.meshes import GrownShape, load_mesh, place_mesh
 from condyle.solver.results import FittedMotion
-from condyle.viz.bone_depth import below_skin
-from condyle.viz.foot_bones import foot, toes
-from condyle.viz.leg_bones import shank, thigh
-from condyle.viz.pelvic_girdle import pelvis
+from condyle.viz.animal_bones import animal_bone
+from condyle.viz.bone_depth import below_skin, direction
+from condyle.viz.bone_design import joined
+from condyle.viz.bone_fitting import fit_bone
+from condyle.viz.bone_library import shipped_bone
+from condyle.viz.bone_signs import bone_of, known_points
+from condyle.viz.bone_solids import swept
 from condyle.viz.shapes import Ball, Limb, Shape, Surface, skin
-from condyle.viz.skeleton_plan import NEAR, SegmentPlan, plan_segments
+from condyle.viz.skeleton_plan import NEAR, SegmentPlan, plan_segments, side_of
 
 FloatArray = NDArray[np.float64]
 
 BLEND = 0.012
 """m; how softly neighbouring parts grow together, for bones about as long as a thigh."""
 
-HEAD_HEIGHT = 0.22
-"""m; from the top of the neck to the crown where no landmark tells."""
+LOOSE = 0.05
+"""m; a joint this far from its bone gets a bar; the centre of a humeral head lies half as far from the blade."""
+
+LINK = 0.006
+"""m; radius of that bar."""
 
 
 def build_bones(motion: FittedMotion) -> tuple[Surface, ...]:
@@ -39,14 +45,54 @@ def build_bones(motion: FittedMotion) -> tuple[Surface, ...]:
     return tuple(
         mesh_surface(motion.shapes[plan.name])
         if has_meshes(motion, plan.name)
-        else plain_bone(plan)
+        else segment_bone(plan)
         for plan in plan_segments(motion)
     )
 
 
+def segment_bone(plan: SegmentPlan) -> Surface:
+    """The stored bone that a segment's landmarks tell, or a plain one."""
+    return known_bone(plan) or plain_bone(plan)
+
+
+def known_bone(plan: SegmentPlan) -> Surface | None:
+    """A bone of the package, laid into the segment; None where none suits it."""
+    name = bone_of(plan)
+    if name is None:
+        return None
+    bone = shipped_bone(name)
+    points = fit_bone(bone, known_points(plan))
+    if points is None:
+        return None
+    faces = bone.faces
+    if side_of(plan.name) == "left":
+        points, faces = points * [1.0, 1.0, -1.0], faces[:, ::-1]
+    return with_links(plan, points, faces)
+
+
+def with_links(plan: SegmentPlan, points: FloatArray, faces: NDArray[np.int64]) -> Surface:
+    """The bone, with a bar to each joint that lies too far from it to seem joined."""
+    surfaces = [(points, faces)]
+    for centre in [*plan.centres.values(), *([plan.proximal] if plan.parent else [])]:
+        away = np.linalg.norm(points - centre, axis=1)
+        nearest = points[np.argmin(away)]
+        if away.min() > LOOSE:
+            way, even = np.linspace(nearest, centre, 6), np.full(6, LINK)
+            aside = np.tile(across(centre - nearest), (6, 1))
+            surfaces.append(swept(way, aside, even, even, sides=8))
+    points, faces = joined(surfaces)
+    return Surface(points, point_normals(points, faces), faces)
+
+
+def across(way: FloatArray) -> FloatArray:
+    """A unit vector square to another."""
+    return direction(np.cross(way, np.eye(3)[np.argmin(np.abs(way))]))
+
+
 def plain_bone(plan: SegmentPlan) -> Surface:
     """The bone that a segment's joint centres and landmarks suggest."""
-    shapes, blend = bone_shapes(plan)
+    shapes = animal_bone(plan) or generic(plan)
+    blend = min(BLEND, 1.5 * min(shape.thinnest for shape in shapes))
     return skin(shapes, blend=blend)
 
 
@@ -86,37 +132,6 @@ def point_normals(points: FloatArray, faces: NDArray[np.int64]) -> FloatArray:
     return np.asarray(normals / np.maximum(np.linalg.norm(normals, axis=1, keepdims=True), 1e-30))
 
 
-def bone_shapes(plan: SegmentPlan) -> tuple[list[Shape], float]:
-    """The parts of a segment's bone and how softly they blend (m)."""
-    makers: tuple[Callable[[SegmentPlan], list[Shape]], ...] = (
-        pelvis,
-        thigh,
-        shank,
-        foot,
-        toes,
-        head,
-    )
-    for make in makers:
-        shapes = make(plan)
-        if shapes:
-            return shapes, 0.006 if make in (foot, toes) else BLEND
-    shapes = generic(plan)
-    return shapes, min(BLEND, 1.5 * min(shape.thinnest for shape in shapes))
-
-
-def head(plan: SegmentPlan) -> list[Shape]:
-    """An egg on a short neck, up to the highest landmark where there is one."""
-    if plan.name != "head":
-        return []
-    heights = [float(p[1] - plan.proximal[1]) for p in plan.landmarks.values()]
-    height = float(np.clip(max(heights, default=HEAD_HEIGHT), 0.6 * HEAD_HEIGHT, HEAD_HEIGHT))
-    middle = plan.proximal + np.array([0.02, 0.56, 0.0]) * [1.0, height, 1.0]
-    return [
-        Ball(middle, np.array([0.40, 0.44, 0.32]) * height),
-        Limb(plan.proximal, middle, 0.018, 0.03),
-    ]
-
-
 def generic(plan: SegmentPlan) -> list[Shape]:
     """Shafts from the joint to each child, else to where the landmarks lead, else a small ball."""
     ends = plan.far_centres() or landmark_end(plan)
@@ -127,7 +142,7 @@ def generic(plan: SegmentPlan) -> list[Shape]:
     hub = plan.proximal
     if len(ends) > 1:
         hub = np.mean([plan.proximal, *ends], axis=0)
-        ends = [plan.proximal, *ends] if plan.parent is not None else ends
+        ends = [plan.proximal, *ends] if something_hangs_at_the_origin(plan) else ends
     shapes: list[Shape] = [
         Limb(hub, end, 1.15 * radius, radius, 0.72)
         for end in ends
@@ -137,9 +152,15 @@ def generic(plan: SegmentPlan) -> list[Shape]:
         Limb(foot_point, below_skin(mark, foot_point), 0.8 * radius, 0.55 * radius)
         for mark in plan.landmarks.values()
         for foot_point in [nearest_on(hub, ends, mark)]
-        if radius < np.linalg.norm(mark - foot_point) < max(0.5 * max(lengths), 0.03)
+        if radius < np.linalg.norm(mark - foot_point) < max(0.6 * max(lengths), 0.03)
     ]
     return shapes + bumps or [block(plan)]
+
+
+def something_hangs_at_the_origin(plan: SegmentPlan) -> bool:
+    """Whether the segment's own joint, or one of its children's at the same place, is there."""
+    near = (np.linalg.norm(centre - plan.proximal) <= NEAR for centre in plan.centres.values())
+    return plan.parent is not None or any(near)
 
 
 def landmark_end(plan: SegmentPlan) -> list[FloatArray]:

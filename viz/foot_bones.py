@@ -1,6 +1,6 @@
 """Foot and toes as drawn: heel, instep and five rays, from the heel and metatarsal landmarks.
 
-Only the outer two rays and the second are ever measured; the others are spread between them.
+Only the outer two rays and the second have landmarks; the others are spread between them.
 """
 
 from __future__ import annotations
@@ -8,87 +8,127 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.viz.bone_depth import SKIN, below_skin, direction
-from condyle.viz.shapes import Ball, Limb, Shape
-from condyle.viz.skeleton_plan import SegmentPlan, find
+from condyle.viz.bone_depth import SKIN, below_skin
+from condyle.viz.bone_design import Design, Part
+from condyle.viz.bone_solids import Egg, Rod, moved
+from condyle.viz.shapes import Limb, Shape
 
 FloatArray = NDArray[np.float64]
 
-FOOT_LENGTH = 0.14
-"""m; from ankle to the metatarsal heads at which the radii below look right; others scale them."""
+FOOT = {
+    "proximal": (0.0, 0.0, 0.0),
+    "CA": (-0.052, -0.023, 0.0),
+    "MT1": (0.136, -0.040, -0.020),
+    "MT2": (0.138, -0.041, 0.002),
+    "MT5": (0.111, -0.046, 0.045),
+}
+
+TOES_IN_FOOT = (0.1235, -0.043, 0.0125)
+"""m; origin of `toes` in `foot`: their axes are parallel in the reference posture."""
+
+TOES = {
+    "proximal": (0.0, 0.0, 0.0),
+    **{
+        f"parent.{name}": tuple(np.subtract(FOOT[name], TOES_IN_FOOT))
+        for name in ("CA", "MT1", "MT2", "MT5")
+    },
+}
+
+SPREAD = (0.0, 0.25, 0.5, 0.75, 1.0)
+
+BASES = (
+    (0.052, -0.022, -0.014),
+    (0.056, -0.018, -0.003),
+    (0.052, -0.021, 0.007),
+    (0.046, -0.027, 0.017),
+    (0.036, -0.035, 0.026),
+)
+"""m; where the metatarsals begin, first to fifth."""
 
 
-def ray_heads(first: FloatArray, fifth: FloatArray, second: FloatArray | None) -> FloatArray:
-    """(5, 3) m: metatarsal heads spread on a shallow arc from first to fifth."""
-    t = np.linspace(0.0, 1.0, 5)
-    heads = first + t[:, None] * (fifth - first)
-    bulge = np.zeros(3) if second is None else second - heads[1]
-    return np.asarray(heads + (np.sin(np.pi * t) / np.sin(np.pi / 4.0))[:, None] * bulge)
+def heads() -> FloatArray:
+    """(5, 3) m: metatarsal heads on a shallow arc from first to fifth, drawn in under the skin."""
+    first, second, fifth = (np.array(FOOT[name]) for name in ("MT1", "MT2", "MT5"))
+    t = np.array(SPREAD)[:, None]
+    arc = first + t * (fifth - first)
+    arc = arc + np.sin(np.pi * t) / np.sin(np.pi / 4.0) * (second - arc[1])
+    middle = arc.mean(axis=0)
+    half = 0.5 * float(np.linalg.norm(fifth - first))
+    return np.asarray(middle + (arc - middle) * (1.0 - 1.1 * SKIN / half) - (0.0, 0.004, 0.0))
 
 
-def inner_heads(heads: FloatArray) -> FloatArray:
-    """The heads drawn together, so that the outer two lie under the skin."""
-    middle = heads.mean(axis=0)
-    half = 0.5 * float(np.linalg.norm(heads[4] - heads[0]))
-    return np.asarray(middle + (heads - middle) * max(1.0 - 1.2 * SKIN / max(half, SKIN), 0.5))
+def foot() -> Design:
+    """Heel bone, the small bones of the instep, five metatarsals."""
+    return Design(FOOT, [heel(), instep(), *metatarsals()])
 
 
-def foot(plan: SegmentPlan) -> list[Shape]:
-    """Heel, instep, and five metatarsals to the ball of the foot."""
-    heel, first, fifth = (plan.landmark(stem) for stem in ("CA", "MT1", "MT5"))
-    if heel is None or first is None or fifth is None:
-        return []
-    ankle = plan.proximal
-    heads = ray_heads(first, fifth, plan.landmark("MT2"))
-    scale = float(np.linalg.norm(heads.mean(axis=0) - heel)) / 1.25 / FOOT_LENGTH
-    up = direction(np.cross(fifth - first, heads.mean(axis=0) - heel))
-    up = up if up @ (ankle - heel) >= 0.0 else -up
-    heads = inner_heads(heads)
-    heads = heads - 0.004 * up * scale
-    heel_bone = below_skin(heel, ankle, 0.024 * scale)
-    instep = ankle + 0.38 * (heads[1] - ankle) + 0.004 * up * scale
-    outside = heel_bone + 0.52 * (heads[4] - heel_bone)
-    bases = instep + np.linspace(0.0, 1.0, 5)[:, None] * (outside - instep)
-    under = ankle - 0.014 * up * scale
-    rays: list[Shape] = [
-        Limb(base, head, 0.0075 * scale, thick * scale, 0.78)
-        for base, head, thick in zip(
-            bases, heads, (0.0095, 0.0078, 0.0074, 0.0072, 0.0074), strict=True
-        )
+def heel() -> Part:
+    """The heel bone: a beam from the heel's tuber forward and outwards, with a shelf under the talus."""
+    heel_bone = below_skin(np.array(FOOT["CA"]), np.zeros(3), 0.021)
+    shapes: list[Shape] = [
+        Egg(moved(heel_bone, 0.002, -0.010, 0.0), (0.019, 0.022, 0.0155)),
+        Rod([moved(heel_bone, 0.004, -0.001, 0.0), (-0.004, -0.018, 0.004)], [0.0150, 0.0130]),
+        Rod(
+            [moved(heel_bone, 0.006, -0.016, 0.0), (0.006, -0.027, 0.007), (0.026, -0.027, 0.013)],
+            [0.0120, 0.0125, 0.0115],
+        ),
+        Rod([(0.002, -0.020, 0.0), (0.006, -0.019, -0.014)], [0.0080, 0.0065]),
     ]
-    return [
-        Ball(heel_bone, np.array([0.021, 0.019, 0.017]) * scale),
-        Limb(heel_bone, under, 0.0165 * scale, 0.017 * scale, 0.92),
-        Limb(under, instep, 0.0165 * scale, 0.0115 * scale),
-        Limb(heel_bone, outside, 0.013 * scale, 0.009 * scale, 0.85),
-        Limb(instep, outside, 0.0115 * scale, 0.009 * scale),
-        *rays,
+    return Part(shapes, 900, blend=0.008)
+
+
+def instep() -> Part:
+    """Navicular, three cuneiforms, cuboid: pebbles that just grow together."""
+    pebbles: list[Shape] = [
+        Egg((0.037, -0.012, -0.007), (0.0080, 0.0125, 0.0165)),
+        Egg((0.034, -0.030, 0.017), (0.0150, 0.0095, 0.0105)),
     ]
+    pebbles += [
+        Egg((x - 0.008, y + 0.001, z), (0.0095, size, 0.0078))
+        for (x, y, z), size in zip(BASES[:3], (0.0115, 0.0100, 0.0095), strict=True)
+    ]
+    return Part(pebbles, 800, blend=0.0025, grid=0.0012)
 
 
-def toes(plan: SegmentPlan) -> list[Shape]:
-    """Five short toes, going on from the parent's metatarsals."""
-    heel, first, fifth = (find(plan.parent_points, stem) for stem in ("CA", "MT1", "MT5"))
-    if heel is None or first is None or fifth is None or plan.centres:
-        return []
-    heads = ray_heads(first, fifth, find(plan.parent_points, "MT2"))
-    middle = heads.mean(axis=0)
-    scale = float(np.linalg.norm(middle - heel)) / 1.25 / FOOT_LENGTH
-    up = direction(np.cross(first - fifth, middle - heel))
-    up = up if up[1] >= 0.0 else -up
-    ahead = direction(np.array([1.0, 0.0, 0.0]) - up * up[0])
-    shapes: list[Shape] = []
-    for head, length, thick in zip(
-        inner_heads(heads) - 0.006 * up * scale,
-        (0.046, 0.041, 0.036, 0.031, 0.026),
-        (0.0082, 0.0062, 0.0058, 0.0056, 0.0056),
+def metatarsals() -> list[Part]:
+    """Five slender bones with a broad base and a round head."""
+    parts = []
+    for base, head, size in zip(BASES, heads(), (1.25, 0.95, 0.92, 0.90, 0.95), strict=True):
+        start = np.array(base)
+        middle = 0.5 * (start + head) + (0.0, 0.0035, 0.0)
+        radii = [0.0078 * size, 0.0050 * size, 0.0062 * size]
+        knob = Egg(head, (0.0078 * size, 0.0076 * size, 0.0072 * size))
+        parts.append(Part([Rod([start, middle, head], radii), knob], 280, blend=0.004, grid=0.0012))
+    under = heads()[0] + (0.0, -0.009, 0.0)
+    parts.append(Part([Egg(under, (0.0055, 0.0040, 0.0075))], 80))
+    return parts
+
+
+def toes() -> Design:
+    """Two bones in the great toe, three in each other, pointing ahead and a little down."""
+    parts = []
+    shares = ((0.56, 0.44), *(((0.50, 0.26, 0.24),) * 4))
+    for head, lengths, reach, size in zip(
+        heads() - np.array(TOES_IN_FOOT) + (0.0, -0.003, 0.0),
+        shares,
+        (0.056, 0.047, 0.042, 0.037, 0.032),
+        (1.30, 0.92, 0.88, 0.85, 0.85),
         strict=True,
     ):
-        start = head + 0.011 * ahead * scale
-        joint = start + (0.55 * length * ahead + 0.002 * up) * scale
-        tip = head + (length * ahead - 0.006 * up) * scale
-        shapes += [
-            Limb(start, joint, thick * scale, 0.85 * thick * scale, 0.85),
-            Limb(joint, tip, 0.85 * thick * scale, 0.85 * thick * scale),
-        ]
-    return shapes
+        start = moved(head, 0.009 * size, 0.0, 0.0)
+        for index, share in enumerate(lengths):
+            end = start + reach * share * np.array([1.0, (0.02, -0.22, -0.25)[index], 0.0])
+            parts.append(toe_bone(start, end, size * (1.0 - 0.06 * index)))
+            start = end
+    return Design(TOES, parts)
+
+
+def toe_bone(start: FloatArray, end: FloatArray, size: float) -> Part:
+    """A phalanx: broad at its base, slim in the middle; short ones are little more than pebbles."""
+    step = end - start
+    base, tip = start + 0.14 * step, start + 0.86 * step
+    shapes: list[Shape] = [
+        Limb(base, tip, 0.0056 * size, 0.0048 * size, 0.80),
+        Egg(base, (0.0050 * size, 0.0062 * size, 0.0068 * size)),
+    ]
+    return Part(shapes, 130, blend=0.003, grid=0.0010)

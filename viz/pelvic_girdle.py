@@ -1,7 +1,7 @@
-"""The pelvis as drawn: a ring of tapered limbs and two wings, hung on ISB landmarks and hips.
+"""The pelvis as drawn: two winged hip bones and the sacrum, in the axes of `pelvis`.
 
-Needs both ASIS, both PSIS and both hip centres; the proportions between them are drawn by eye
-and scale with the distance of the hips.
+It hangs on both ASIS, PSIS and outermost points of the crest (Wu et al. 2002) and on the hip centres; the
+sacrum's top lies at the lumbosacral joint. What is between them is drawn by eye.
 """
 
 from __future__ import annotations
@@ -11,95 +11,150 @@ import itertools
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.viz.bone_depth import SKIN, below_skin, direction
+from condyle.viz.bone_depth import SKIN, below_skin
+from condyle.viz.bone_design import Design, Part
+from condyle.viz.bone_solids import Drum, Egg, Rod, both_sides, frame_along, moved
 from condyle.viz.shapes import Ball, Chain, Limb, Plate, Shape
-from condyle.viz.skeleton_plan import SegmentPlan
 
 FloatArray = NDArray[np.float64]
 
-HIP_WIDTH = 0.17
-"""m; between the hip centres at which the radii below look right; others scale them."""
+RIGHT = {
+    "ASIS": (0.0471, 0.0859, 0.125),
+    "PSIS": (-0.1079, 0.0859, 0.040),
+    "IC": (-0.040, 0.143, 0.140),
+    "hip": (0.0, 0.0, 0.0898),
+}
+
+MIRRORED = (1.0, 1.0, -1.0)
+
+ANCHORS = {
+    **{f"{name}_right": point for name, point in RIGHT.items() if name != "hip"},
+    **{
+        f"{name}_left": tuple(np.multiply(point, MIRRORED))
+        for name, point in RIGHT.items()
+        if name != "hip"
+    },
+    "child_right": RIGHT["hip"],
+    "child_left": tuple(np.multiply(RIGHT["hip"], MIRRORED)),
+    "child_middle": (-0.035, 0.078, 0.0),
+}
+
+SACRAL_SHEET = (
+    ((-0.066, 0.052, 0.000), (-0.080, 0.054, 0.042), (-0.101, -0.010, 0.000)),
+    ((-0.080, 0.054, 0.042), (-0.101, 0.000, 0.026), (-0.101, -0.010, 0.000)),
+    ((-0.101, 0.000, 0.026), (-0.104, -0.044, 0.007), (-0.101, -0.010, 0.000)),
+)
+"""m; triangles of the sacrum's right half, from its wing to its lower corner."""
+
+SOCKET = 0.0255
+"""m; radius of the hip socket's hollow."""
 
 
-def pelvis(plan: SegmentPlan) -> list[Shape]:
-    """A girdle: two winged hip bones on a sacrum, closed in front at the symphysis."""
-    sides: list[tuple[FloatArray, FloatArray, FloatArray]] = []
-    for side in ("right", "left"):
-        front, back = (plan.landmarks.get(f"{stem}_{side}") for stem in ("ASIS", "PSIS"))
-        hip = next((c for name, c in plan.centres.items() if name.endswith(f"_{side}")), None)
-        if front is None or back is None or hip is None:
-            return []
-        sides.append((front, back, hip))
-    (front_r, back_r, right_hip), (front_l, back_l, left_hip) = sides
-    width = float(np.linalg.norm(right_hip - left_hip))
-    right = direction(right_hip - left_hip)
-    back, front = 0.5 * (back_r + back_l), 0.5 * (front_r + front_l)
-    forward = front - back
-    forward = direction(forward - right * (forward @ right))
-    up = np.cross(right, forward)
-    middle = 0.5 * (right_hip + left_hip)
-    scale = width / HIP_WIDTH
-    shapes = sacrum(back + SKIN * forward, forward, up, scale)
-    symphysis = middle + (0.052 * forward - 0.030 * up) * scale
-    for (asis, psis, hip), out in zip(sides, (right, -right), strict=True):
-        crest = plan.landmarks.get(f"IC_{'right' if out is right else 'left'}")
-        if crest is None:
-            crest = 0.5 * (asis + psis) + (0.05 * up + 0.03 * out) * scale
-        inside = middle + 0.09 * up * scale
-        top = [below_skin(point, inside, 1.2 * SKIN) for point in (asis, crest, psis)]
-        shapes += hip_bone(top, hip, symphysis, (out, forward, up), scale)
-    return shapes
+def pelvis() -> Design:
+    """Hip bones on a sacrum, closed in front at the symphysis."""
+    return Design(
+        ANCHORS,
+        [
+            Part(
+                [*both_sides(*hip_bone()), *sacrum()],
+                5200,
+                blend=0.010,
+                grid=0.002,
+                carved=both_sides(*hollows()),
+            )
+        ],
+    )
 
 
-def sacrum(at: FloatArray, forward: FloatArray, up: FloatArray, scale: float) -> list[Shape]:
-    """A wedge below the PSIS, curving backwards and then in."""
-    top, middle, tip = (
-        at + (a * forward + b * up) * scale
-        for a, b in ((0.034, 0.022), (-0.002, -0.035), (0.016, -0.095))
+def sacrum() -> list[Shape]:
+    """A wedge from the lumbosacral joint backwards and down, with wings to the hip bones, and the coccyx."""
+    plateau = np.array([-0.041, 0.070, 0.0])
+    wings = both_sides(
+        Rod(
+            [(-0.050, 0.066, 0.012), (-0.064, 0.060, 0.036), (-0.078, 0.056, 0.044)],
+            [0.0150, 0.0160, 0.0130],
+        ),
+        Plate(np.array(SACRAL_SHEET), 0.0070),
     )
     return [
-        Limb(top, middle, 0.024 * scale, 0.016 * scale),
-        Limb(middle, tip, 0.016 * scale, 0.006 * scale),
+        Drum(plateau, frame_along((0.55, 1.0, 0.0)), (0.0165, 0.0245), 0.010, 0.004, 0.0),
+        Rod(
+            [
+                (-0.048, 0.060, 0.0),
+                (-0.082, 0.030, 0.0),
+                (-0.104, -0.014, 0.0),
+                (-0.102, -0.050, 0.0),
+            ],
+            [0.0200, 0.0150, 0.0100, 0.0075],
+        ),
+        Rod(
+            [(-0.102, -0.050, 0.0), (-0.092, -0.070, 0.0), (-0.080, -0.079, 0.0)],
+            [0.0075, 0.0058, 0.0040],
+        ),
+        Rod(
+            [(-0.088, 0.068, 0.0), (-0.101, 0.034, 0.0), (-0.110, -0.004, 0.0)],
+            [0.0070, 0.0065, 0.0050],
+        ),
+        Rod([(-0.060, 0.066, 0.0), (-0.092, 0.066, 0.0)], [0.0120, 0.0070]),
+        *wings,
     ]
 
 
-def hip_bone(
-    top: list[FloatArray],
-    hip: FloatArray,
-    symphysis: FloatArray,
-    axes: tuple[FloatArray, FloatArray, FloatArray],
-    scale: float,
-) -> list[Shape]:
-    """Wing, crest, socket, and the ring of pubis and ischium below it."""
-    asis, crest, psis = top
-    out, forward, up = axes
-    roof = hip + (0.028 * up - 0.010 * out - 0.006 * forward) * scale
-    joint = psis + (0.030 * forward - 0.012 * up) * scale
-    ala = joint + (0.012 * forward + 0.014 * up - 0.032 * out) * scale
-    front = asis - 0.030 * up * scale + 0.25 * (roof - asis)
-    sit = hip + (-0.068 * up - 0.026 * forward - 0.024 * out) * scale
-    pubis = symphysis + 0.009 * out * scale
+def hip_bone() -> list[Shape]:
+    """Wing, crest, socket, and the ring of pubis and ischium below it, on the right."""
+    hip = np.array(RIGHT["hip"])
+    inside = np.array([0.0, 0.09, 0.0])
+    asis, crest, psis = (
+        below_skin(np.array(RIGHT[name]), inside, 1.0 * SKIN) for name in ("ASIS", "IC", "PSIS")
+    )
+    roof = moved(hip, -0.006, 0.030, -0.008)
+    joint = moved(psis, 0.026, -0.014, 0.004)
+    front = moved(asis, -0.008, -0.038, -0.010)
+    sit = moved(hip, -0.030, -0.072, -0.026)
+    spine = moved(hip, -0.050, -0.022, -0.026)
+    pubis = np.array([0.052, -0.030, 0.009])
     rim = crest_curve(asis, crest, psis)
-    thin, bar = 0.0045 * scale, 0.0085 * scale
     fan = np.stack([np.stack([a, b, roof]) for a, b in itertools.pairwise(rim)])
     return [
-        Plate(fan, thin),
-        Chain(rim, 0.0068 * scale),
-        Limb(psis, joint, bar, 0.012 * scale),
-        Limb(joint, ala, 0.013 * scale, 0.019 * scale, 0.9),
-        Limb(joint, roof, 0.012 * scale, 0.016 * scale, 0.9),
-        Limb(asis, front, 0.0075 * scale, 0.007 * scale),
-        Limb(front, roof, 0.007 * scale, 0.014 * scale),
-        Ball(hip - 0.010 * out * scale, np.full(3, 0.0265 * scale)),
-        Limb(hip + (0.012 * forward - 0.014 * out) * scale, pubis, 0.014 * scale, bar, 0.75),
-        Limb(hip - (0.012 * up + 0.014 * out) * scale, sit, 0.016 * scale, 0.014 * scale, 0.8),
-        Limb(sit, pubis - 0.016 * up * scale, 0.011 * scale, 0.007 * scale, 0.7),
-        Limb(pubis, pubis - 0.018 * up * scale, 0.0095 * scale, 0.008 * scale),
+        Plate(fan, 0.0042),
+        Chain(rim, 0.0066),
+        Limb(psis, joint, 0.0085, 0.012),
+        Limb(joint, roof, 0.012, 0.016, 0.9),
+        Limb(asis, front, 0.0075, 0.0070),
+        Limb(front, roof, 0.0075, 0.014),
+        Ball(moved(hip, -0.002, 0.0, -0.010), np.full(3, 0.0315)),
+        Rod(
+            [moved(hip, 0.014, 0.006, -0.022), (0.034, -0.010, 0.040), pubis],
+            [0.0125, 0.0085, 0.0085],
+        ),
+        Rod(
+            [moved(hip, -0.014, -0.012, -0.016), moved(hip, -0.028, -0.045, -0.022), sit],
+            [0.0165, 0.0125, 0.0150],
+        ),
+        Limb(moved(hip, -0.026, -0.010, -0.018), spine, 0.0100, 0.0045),
+        Rod(
+            [
+                moved(sit, 0.004, -0.006, 0.0),
+                (0.012, -0.066, 0.040),
+                moved(pubis, -0.004, -0.024, 0.002),
+            ],
+            [0.0110, 0.0072, 0.0075],
+        ),
+        Limb(pubis, moved(pubis, -0.003, -0.022, 0.0), 0.0090, 0.0075),
+    ]
+
+
+def hollows() -> list[Shape]:
+    """The socket's hollow, open outwards and a little down."""
+    hip = np.array(RIGHT["hip"])
+    return [
+        Egg(hip, (SOCKET, SOCKET, SOCKET)),
+        Rod([hip, moved(hip, 0.010, -0.012, 0.040)], [SOCKET - 0.001, SOCKET + 0.004]),
     ]
 
 
 def crest_curve(asis: FloatArray, crest: FloatArray, psis: FloatArray) -> FloatArray:
-    """(6, 3) m: points of the arch (a quadratic) from ASIS to PSIS through the crest."""
-    t = np.linspace(0.0, 1.0, 6)[:, None]
+    """(7, 3) m: points of the arch (a quadratic) from ASIS to PSIS through the crest."""
+    t = np.linspace(0.0, 1.0, 7)[:, None]
     top = 2.0 * crest - 0.5 * (asis + psis)
     return np.asarray((1.0 - t) ** 2 * asis + 2.0 * t * (1.0 - t) * top + t**2 * psis)

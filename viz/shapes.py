@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,6 +26,23 @@ CELLS_ACROSS = 4.0
 
 MOST_CELLS = 1_000_000
 """A shape's grid is coarsened to this, about 0.3 s, whatever a model declares."""
+
+
+class Shape(Protocol):
+    """Anything solid with a distance function; `bone_solids` holds those of the stored bones."""
+
+    @property
+    def thinnest(self) -> float:
+        """The smallest radius, m."""
+        ...
+
+    def bounds(self) -> tuple[FloatArray, FloatArray]:
+        """The corners of the box around it, m."""
+        ...
+
+    def distance(self, points: FloatArray) -> FloatArray:
+        """Distance (m) from the surface, negative inside."""
+        ...
 
 
 @dataclass(frozen=True, slots=True)
@@ -162,9 +180,6 @@ def to_triangle(points: FloatArray, triangle: FloatArray) -> FloatArray:
     return np.asarray(np.where(above, np.abs(offsets[0] @ normal), to_edges))
 
 
-Shape = Limb | Ball | Chain | Plate
-
-
 @dataclass(frozen=True, slots=True)
 class Surface:
     """Triangles: points (n, 3) m, outward unit normals (n, 3), faces (m, 3) indices."""
@@ -187,7 +202,12 @@ def spacing_for(shapes: Sequence[Shape], extent: FloatArray) -> float:
     return max(wanted, float(np.cbrt(np.prod(extent) / MOST_CELLS)))
 
 
-def sample(shapes: Sequence[Shape], blend: float) -> tuple[NDArray[np.float32], FloatArray, float]:
+def sample(
+    shapes: Sequence[Shape],
+    blend: float,
+    carved: Sequence[Shape] = (),
+    spacing: float | None = None,
+) -> tuple[NDArray[np.float32], FloatArray, float]:
     """The blended distance on a grid, with the grid's first point and its spacing (m).
 
     A shape is evaluated only near itself: elsewhere it cannot move the surface.
@@ -195,26 +215,51 @@ def sample(shapes: Sequence[Shape], blend: float) -> tuple[NDArray[np.float32], 
     boxes = [shape.bounds() for shape in shapes]
     low = np.min([box[0] for box in boxes], axis=0)
     high = np.max([box[1] for box in boxes], axis=0)
-    spacing = spacing_for(shapes, high - low)
-    margin = blend + 2.0 * spacing
+    step = spacing or spacing_for(shapes, high - low)
+    margin = blend + 2.0 * step
     origin = low - margin
-    count = np.ceil((high - low + 2.0 * margin) / spacing).astype(int) + 1
+    count = np.ceil((high - low + 2.0 * margin) / step).astype(int) + 1
     field = np.full(count, 10.0 * margin)
-    for shape, box in zip(shapes, boxes, strict=True):
-        first = np.clip(np.floor((box[0] - margin - origin) / spacing).astype(int), 0, count)
-        last = np.clip(np.ceil((box[1] + margin - origin) / spacing).astype(int) + 1, 0, count)
-        ranges = [np.arange(a, b) for a, b in zip(first, last, strict=True)]
-        points = origin + spacing * np.stack(np.meshgrid(*ranges, indexing="ij"), axis=-1)
-        block = tuple(slice(a, b) for a, b in zip(first, last, strict=True))
+    for shape in shapes:
+        block, points = near(shape, origin, step, count, margin)
         field[block] = smooth_minimum(field[block], shape.distance(points), blend)
-    return field.astype(np.float32), origin, spacing
+    for shape in carved:
+        block, points = near(shape, origin, step, count, margin)
+        field[block] = -smooth_minimum(-field[block], shape.distance(points), blend)
+    return field.astype(np.float32), origin, step
 
 
-def skin(shapes: Sequence[Shape], *, blend: float) -> Surface:
-    """One closed surface around all the shapes, grown together within `blend` (m)."""
+def near(
+    shape: Shape, origin: FloatArray, spacing: float, count: NDArray[np.int64], margin: float
+) -> tuple[tuple[slice, ...], FloatArray]:
+    """The block of the grid within `margin` (m) of a shape, and its points (i, j, k, 3)."""
+    low, high = shape.bounds()
+    first = np.clip(np.floor((low - margin - origin) / spacing).astype(int), 0, count)
+    last = np.clip(np.ceil((high + margin - origin) / spacing).astype(int) + 1, first, count)
+    ranges = [np.arange(a, b) for a, b in zip(first, last, strict=True)]
+    points = origin + spacing * np.stack(np.meshgrid(*ranges, indexing="ij"), axis=-1)
+    return tuple(slice(a, b) for a, b in zip(first, last, strict=True)), points
+
+
+def skin(
+    shapes: Sequence[Shape],
+    *,
+    blend: float,
+    carved: Sequence[Shape] = (),
+    spacing: float | None = None,
+) -> Surface:
+    """One closed surface around all the shapes, grown together within `blend` (m).
+
+    Parameters
+    ----------
+    carved : shapes
+        Taken away again, with edges as round as the joins.
+    spacing : float, optional
+        m, of the grid; by default what suits the thinnest shape.
+    """
     pyvista = open_pyvista()
-    field, origin, spacing = sample(shapes, blend)
-    grid = pyvista.ImageData(dimensions=field.shape, spacing=(spacing,) * 3, origin=origin)
+    field, origin, step = sample(shapes, blend, carved, spacing)
+    grid = pyvista.ImageData(dimensions=field.shape, spacing=(step,) * 3, origin=origin)
     grid["depth"] = -field.ravel(order="F")  # VTK's normals point to where the value falls
     mesh = grid.contour([0.0], scalars="depth", method="flying_edges", compute_normals=True)
     normals = np.asarray(mesh.point_data["Normals"], dtype=np.float64)

@@ -17,8 +17,11 @@ from condyle.solver.results import FittedMotion
 
 FloatArray = NDArray[np.float64]
 
-NEAR = 0.03
+NEAR = 0.015
 """m; a child's joint this close to the segment's own makes a block (a talus), not a shaft."""
+
+ONE = 1e-3
+"""m; children that hang closer together than this hang at one place."""
 
 FRAMES_FOR_MEDIAN = 50
 """Frames, evenly over the trial: enough for a median that only shapes a drawing."""
@@ -53,16 +56,11 @@ class SegmentPlan:
         return find(self.landmarks, stem)
 
     def far_centres(self) -> list[FloatArray]:
-        """The children's joint centres that are not at the segment's own."""
-        return [c for c in self.centres.values() if np.linalg.norm(c - self.proximal) > NEAR]
-
-    def distal_centre(self, *stems: str) -> FloatArray | None:
-        """The only far child's joint centre, else midway between the named landmarks."""
-        centres = self.far_centres()
-        if len(centres) == 1:
-            return centres[0]
-        points = [point for stem in stems if (point := self.landmark(stem)) is not None]
-        return np.asarray(np.mean(points, axis=0)) if len(points) == len(stems) else None
+        """The children's joint centres that are not at the segment's own, every place once."""
+        far = [c for c in self.centres.values() if np.linalg.norm(c - self.proximal) > NEAR]
+        return [
+            c for i, c in enumerate(far) if not any(np.allclose(c, e, atol=ONE) for e in far[:i])
+        ]
 
 
 def find(points: Mapping[str, FloatArray], stem: str) -> FloatArray | None:
