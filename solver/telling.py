@@ -52,12 +52,16 @@ class Telling:
     remedies : unseen name -> the segment nearest the root on which markers would tell it
     pairs : (name, name, correlation)
         Free coordinates that can hardly be told apart, the closest first.
+    freedoms, taken_by_ties : int
+        Of the skeleton without its ties; how many of them the ties take away.
     """
 
     sd: Mapping[str, float]
     unseen: tuple[str, ...]
     remedies: Mapping[str, str]
     pairs: tuple[tuple[str, str, float], ...]
+    freedoms: int
+    taken_by_ties: int
 
 
 @one_thread
@@ -70,16 +74,19 @@ def tell(skeleton: Skeleton, *, present: BoolArray | None = None) -> Telling:
         Which markers there really are; by default all that have a place.
     """
     present = np.ones(len(skeleton.markers), dtype=bool) if present is None else present
-    judged = _judge(SkeletonFunctions(skeleton), present)
+    functions = SkeletonFunctions(skeleton)
+    judged = _judge(functions, present)
     unseen = tuple(name for name, sd in judged.sd.items() if np.isnan(sd))
     remedies = _remedies(skeleton, present, unseen) if unseen else {}
-    return Telling(judged.sd, unseen, remedies, judged.pairs)
+    freedoms = int((~functions.held).sum())
+    return Telling(judged.sd, unseen, remedies, judged.pairs, freedoms, judged.taken)
 
 
 @dataclass(frozen=True, slots=True)
 class _Judged:
     sd: dict[str, float]
     pairs: tuple[tuple[str, str, float], ...]
+    taken: int
 
 
 def _judge(functions: SkeletonFunctions, present: BoolArray) -> _Judged:
@@ -101,6 +108,7 @@ def _judge(functions: SkeletonFunctions, present: BoolArray) -> _Judged:
     return _Judged(
         {name: float(value) for name, value in zip(names, median, strict=True)},
         _pairs(names, chosen, full, sd),
+        functions.ties.freedom_taken(postures, problem.numbers),
     )
 
 

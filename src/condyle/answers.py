@@ -75,7 +75,7 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
             _rest(c),
             _told(c, report),
         )
-        for c in report.coordinates
+        for c in _by_joint(report)
     ]
     show_table("", ["coordinate", "joint", "from", "to", "rest", "sd from markers"], rows)
     for segment, markers in report.markers.items():
@@ -85,6 +85,8 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
         say(f"without a place until a static gives one: {', '.join(report.without_place)}")
     for remark in report.mesh_remarks:
         say(remark)
+    if report.taken_by_ties:
+        say(f"{report.freedoms} freedoms, of which the ties take {report.taken_by_ties}")
     for first, second, correlation in report.pairs:
         say(f"hardly told apart: {first} and {second} (correlation {correlation:+.2f})")
     for region in report.singular:
@@ -99,13 +101,20 @@ def show_model(report: ModelReport, *, as_json: bool) -> int:
     return DONE
 
 
+def _by_joint(report: ModelReport) -> list[CoordinateReport]:
+    """Coordinates and reported angles, those of a joint together."""
+    rows = [*report.coordinates, *report.angles]
+    joints = [name for _, _, name, _ in report.tree]
+    return sorted(rows, key=lambda row: joints.index(row.joint) if row.joint in joints else -1)
+
+
 def _number(value: float | None, unit: str) -> str:
     return "" if value is None else f"{value:g} {unit}"
 
 
 def _rest(coordinate: CoordinateReport) -> str:
     return (
-        coordinate.role if coordinate.role != "free" else _number(coordinate.rest, coordinate.unit)
+        _number(coordinate.rest, coordinate.unit) if coordinate.role == "free" else coordinate.role
     )
 
 

@@ -75,6 +75,9 @@ class ModelReport:
     ----------
     tree : (depth, segment, joint, kind of joint) in order
     coordinates : CoordinateReports
+    angles : CoordinateReports
+        The reported angles of floating and spherical joints, which have neither range nor rest.
+    freedoms, taken_by_ties : int
     markers : segment -> marker names
     without_place : markers that only a static can place
     unseen : coordinates and angles that the markers cannot tell
@@ -92,6 +95,9 @@ class ModelReport:
     sized: bool
     tree: tuple[tuple[int, str, str, str], ...]
     coordinates: tuple[CoordinateReport, ...]
+    angles: tuple[CoordinateReport, ...]
+    freedoms: int
+    taken_by_ties: int
     markers: dict[str, tuple[str, ...]]
     without_place: tuple[str, ...]
     unseen: tuple[str, ...]
@@ -145,6 +151,9 @@ def check(
         sized=bool(skeleton.sizes),
         tree=_tree(skeleton),
         coordinates=tuple(_coordinate(skeleton, c, told) for c in skeleton.coordinates),
+        angles=_angles(skeleton, told),
+        freedoms=told.freedoms,
+        taken_by_ties=told.taken_by_ties,
         markers={
             segment: tuple(m.name for m in skeleton.markers if m.segment == segment)
             for segment in skeleton.segment_names
@@ -244,6 +253,20 @@ def _coordinate(skeleton: Skeleton, coordinate: Coordinate, told: Telling) -> Co
         role=role,
         sd=_told_sd(coordinate, told, factor),
     )
+
+
+def _angles(skeleton: Skeleton, told: Telling) -> tuple[CoordinateReport, ...]:
+    """What is reported of orientations, with the sd that the markers give it."""
+    rows = []
+    for joint in skeleton.joints:
+        if isinstance(joint.motion, Floating | Spherical):
+            for name in joint.motion.angles.names:
+                sd = told.sd.get(name, float("nan"))
+                shown = float(np.degrees(sd)) if np.isfinite(sd) else None
+                rows.append(
+                    CoordinateReport(name, joint.name, "deg", None, None, 0.0, "angle", shown)
+                )
+    return tuple(rows)
 
 
 def _told_sd(coordinate: Coordinate, told: Telling, factor: float) -> float | None:
