@@ -180,7 +180,7 @@ def run(study: Study, data: Path) -> None:
     calibration = calibrate(skeleton, static, labels=label_map)
     sized = perf_counter() - began
     began = perf_counter()
-    fit = fit_trial(calibration.skeleton, trial)
+    fit = fit_trial(calibration.skeleton, trial, smooth=True)
     seconds = perf_counter() - began
     motion = fit.motion
     print(f"{study.folder}: static in ({sized:.1f} s), {len(trial)} frames out in {seconds:.1f} s")
