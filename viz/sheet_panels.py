@@ -145,7 +145,7 @@ def towards(figure: Figure, view: View) -> FloatArray:
 def _marker_sides(
     resting: RestingModel, figure: Figure, views: Sequence[View]
 ) -> list[tuple[str, ...]]:
-    """For each view the markers that face it best, told from the nearest point of the bone."""
+    """For each view the markers that face it best: away from the nearest bone, and from its middle."""
     motion = resting.motion(with_markers=True)
     segment_of = {marker.name: marker.segment for marker in resting.skeleton.markers}
     directions = np.stack([towards(figure, view) for view in views])
@@ -155,7 +155,7 @@ def _marker_sides(
         index = motion.segment_names.index(segment_of[name])
         bone = figure.bones[index].points @ poses[index, :3, :3].T + poses[index, :3, 3]
         nearest = bone[int(np.linalg.norm(bone - point, axis=1).argmin())]
-        facing_by = directions @ (point - nearest)
+        facing_by = directions @ (point - nearest + (point - bone.mean(axis=0)) / 2)
         slack = 0.0 if views[0] == RIGHT and side_of(name) else FRONT_FIRST
         first = len(views) == 1 or facing_by[0] > facing_by[1] - slack
         sides[0 if first else 1].append(name)

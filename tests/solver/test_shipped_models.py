@@ -13,8 +13,9 @@ from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
 from condyle.model import load_skeleton, shipped_models
-from condyle.model.growth import sized_joint_centres, sized_numbers
+from condyle.model.growth import sized_joint_centres, sized_lengths, sized_numbers
 from condyle.model.skeleton import LABORATORY, Size, Skeleton, Spherical
+from condyle.solver.calibration import calibrate
 from condyle.solver.cold_start import tightened
 from condyle.solver.frame_fit import fit_frames
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
@@ -148,3 +149,47 @@ def test_a_person_grown_evenly_has_every_length_in_proportion(
             continue
         for child, centre in centres.items():
             np.testing.assert_allclose(after[segment][child], stature_share * centre, atol=1e-12)
+
+
+LENGTHS = [
+    # Drillis & Contini 1966 (a transcription): shares of stature, within 5 per cent. The upper arm
+    # from joint centre to joint centre as de Leva 1996 has it (from memory); that table's begins at
+    # the acromion.
+    ("upper_limb", "upper_arm_right", 0.2817 / 1.741),
+    ("upper_limb", "forearm_right", 0.146),
+    ("lower_limbs", "thigh_right", 0.245),
+    ("lower_limbs", "shank_right", 0.246),
+    ("sagittal_leg", "thigh", 0.245),
+    ("sagittal_leg", "shank", 0.246),
+    ("hand", "forearm_right", 0.146),
+]
+
+
+@pytest.mark.parametrize("stature", [1.0, 1.4, 1.75, 2.1])
+@pytest.mark.parametrize(("name", "segment", "share"), LENGTHS)
+def test_a_person_of_any_stature_is_sized_to_published_proportions(
+    name: str, segment: str, share: float, stature: float, recording_of
+) -> None:
+    model = load_skeleton(name)
+    assert model.person is not None
+    even = {s.name: Size((stature / model.person.stature,) * 3) for s in model.segments}
+    grown = replace(model, sizes=even)
+    functions = SkeletonFunctions(grown)
+    freedoms = functions.kinematics.freedoms
+    standing = model.sizing.standing
+    scalars = np.array(
+        [
+            [
+                standing[n].value if n in standing else model.coordinate(n).rest
+                for n in freedoms.scalars
+            ]
+        ]
+    )
+    posture = Posture(scalars, np.tile([1.0, 0, 0, 0], (1, len(freedoms.balls), 1)))
+    markers = functions.marker_positions(posture, sized_numbers(grown, np.eye(3)))
+    static = recording_of(model.marker_names, np.repeat(markers, 5, axis=0), up="+Y")
+    found = calibrate(model, static, stature=stature, up="+Y").skeleton
+    length = sized_lengths(found)[segment]
+    assert length == pytest.approx(
+        share * stature, rel=0.06 if segment.startswith("forearm") else 0.05
+    )
