@@ -25,7 +25,7 @@ FRAMES_A_BLOCK = 4
 """Frames in a block of the selected inverse; any window of five frames lies in two neighbouring blocks."""
 
 
-def band_of_frames(H: FloatArray, width: int) -> FloatArray:
+def band_of_frames(H: FloatArray, width: int, room: FloatArray | None = None) -> FloatArray:
     """The lower band of a block-diagonal matrix.
 
     Parameters
@@ -33,13 +33,19 @@ def band_of_frames(H: FloatArray, width: int) -> FloatArray:
     H : (frames, n, n) symmetric
     width : int
         Of the band below the diagonal, at least n - 1.
+    room : array, optional
+        An earlier band of this size, to be written over: new memory takes longer than the sums.
 
     Returns
     -------
     (width + 1, frames n), entry [o, j] standing at row j + o, column j; in Fortran order.
     """
     frames, n, _ = H.shape
-    band = np.zeros((width + 1, frames * n), order="F")
+    if room is None:
+        band = np.zeros((width + 1, frames * n), order="F")
+    else:
+        band = room
+        band.fill(0.0)
     by_frame = band.reshape(width + 1, n, frames, order="F")
     for column in range(n):
         by_frame[: n - column, column] = H[:, column:, column].T

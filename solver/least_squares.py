@@ -198,7 +198,8 @@ def minimise(
         rounds[rows] += 1
         better = new_cost <= cost * (1 + ROUNDING)
         unclear = gain <= ROUNDING * cost
-        ratio = (cost - new_cost) / np.maximum(gain, np.finfo(float).tiny)
+        with np.errstate(over="ignore"):  # next to no gain: any change is as good as infinite
+            ratio = (cost - new_cost) / np.maximum(gain, np.finfo(float).tiny)
         small = np.sqrt(2 * np.maximum(gain, 0.0)) <= tolerance * np.maximum(np.sqrt(2 * cost), 1.0)
         done = small & (factor < 1e-2)
         eased = np.where((ratio > 0.75) | unclear, factor / 10, factor)

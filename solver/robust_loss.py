@@ -18,13 +18,13 @@ from typing import Protocol
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import chi2
+from scipy.special import chdtri
 
 FloatArray = NDArray[np.float64]
 
-HUBER_BEND = float(np.sqrt(chi2.ppf(0.95, 3)))
+HUBER_BEND = float(np.sqrt(chdtri(3, 0.05)))
 """e beyond which 5 % of sound markers lie: three independent normal axes."""
-GEMAN_MCCLURE_SCALE = float(np.sqrt(chi2.ppf(0.99, 3)))
+GEMAN_MCCLURE_SCALE = float(np.sqrt(chdtri(3, 0.01)))
 MU_STEP = 1.4
 """By which mu falls (Yang et al. 2020)."""
 

@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.solver.block_banded import band_of_frames, factored, times, without
+from condyle.solver.block_banded import Factor, band_of_frames, factored, times, without
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Bounds
 from condyle.solver.posture import Posture
@@ -30,6 +30,8 @@ TOLERANCE, NEWTON_TOLERANCE = 1e-8, 1e-6
 second derivative squares it, so such a step need not be confirmed by another."""
 MOST_ROUNDS = 60
 MOST_SET_CHANGES = 12
+MOST_CHORDS, SHORTER = 8, 0.1
+"""Steps with one factor, and by how much each must gain less than the one before."""
 ROUNDING = 1e-12
 LEAST_SHARE = 1e-8
 """Eigenvalue of a frame's second derivative, scaled by its information, that counts as nothing."""
@@ -96,11 +98,11 @@ def minimise_trial(
             # Not near a minimum: where a frame's own second derivative bends down, turn it up.
             if exact:
                 exact = False
-                band = point.band(problem, prior, exact=False)
+                band = point.band(problem, prior, exact=False, room=band)
             else:
                 damping = max(10 * damping, LEAST_DAMPING)
             continue
-        step, active = found
+        step, active, factor = found
         gain = float(step @ point.force.ravel() - step @ times(band, step) / 2)
         there = bounds.inside(here.after(step.reshape(point.force.shape)))
         new = _Point.at(problem, prior, there)
@@ -112,8 +114,12 @@ def minimise_trial(
             converged = bool(small) and damping <= LEAST_DAMPING
             if ratio > 0.5 or small:
                 damping = damping / 10 if damping > LEAST_DAMPING else 0.0
+            if not converged and damping == 0 and factor is not None:
+                here, point, converged = _polished(
+                    problem, prior, bounds, here, point, factor, active
+                )
             if not converged:
-                band = point.band(problem, prior, exact=True)
+                band = point.band(problem, prior, exact=True, room=band)
         elif small:
             converged = damping <= LEAST_DAMPING
             damping /= 10
@@ -144,12 +150,19 @@ class _Point:
         cost = costs.sum() + (prior.weights() * differences**2).sum() / 2
         return cls(posture, H, costs, float(cost), g + prior.force(differences, turns), turns)
 
-    def band(self, problem: FrameProblem, prior: ProcessPrior, *, exact: bool) -> FloatArray:
+    def band(
+        self,
+        problem: FrameProblem,
+        prior: ProcessPrior,
+        *,
+        exact: bool,
+        room: FloatArray | None = None,
+    ) -> FloatArray:
         """The second derivative of F, or what makes it positive definite."""
         H = self.information - problem.curvature(self.posture, np.arange(len(self.posture)))
         if not exact:
             H = _turned_up(H, self.information)
-        return system_band(H, prior, self.turns)
+        return system_band(H, prior, self.turns, room)
 
 
 def _turned_up(H: FloatArray, information: FloatArray) -> FloatArray:
@@ -163,10 +176,44 @@ def _turned_up(H: FloatArray, information: FloatArray) -> FloatArray:
     return np.asarray(blocks * root[:, :, None] * root[:, None, :])
 
 
-def system_band(H: FloatArray, prior: ProcessPrior, turns: FloatArray) -> FloatArray:
+def _polished(
+    problem: FrameProblem,
+    prior: ProcessPrior,
+    bounds: Bounds,
+    here: Posture,
+    point: _Point,
+    factor: Factor,
+    active: IntArray,
+) -> tuple[Posture, _Point, bool]:
+    """Steps with the factor of the last one, as long as each is much shorter than the one before.
+
+    Evaluating is cheap beside factoring (the chord method); what it cannot finish it leaves.
+    """
+    before = np.inf
+    for _ in range(MOST_CHORDS):
+        step = factor.solve(np.where(active != 0, 0.0, point.force).ravel())
+        step = step.reshape(point.force.shape)
+        low, high = bounds.steps(here)
+        gain = float((step * point.force).sum() / 2)
+        if gain > SHORTER * before or (step < low).any() or (step > high).any():
+            break
+        there = bounds.inside(here.after(step))
+        new = _Point.at(problem, prior, there)
+        if new.cost > point.cost * (1 + ROUNDING):
+            break
+        here, point, before = there, new, gain
+        if np.sqrt(2 * abs(gain)) <= TOLERANCE * np.sqrt(2 * point.cost):
+            pushed = (active * point.force >= 0) | bounds.pinned
+            return here, point, bool(pushed.all())
+    return here, point, False
+
+
+def system_band(
+    H: FloatArray, prior: ProcessPrior, turns: FloatArray, room: FloatArray | None = None
+) -> FloatArray:
     """The band of frames' blocks H (frames, n, n) with the prior's J'J."""
     reach = prior.order * H.shape[1] + (2 if turns.shape[2] else 0)
-    band = band_of_frames(H, reach)
+    band = band_of_frames(H, reach, room)
     prior.add_to_band(band, turns)
     return band
 
@@ -178,15 +225,18 @@ def _bounded_step(
     low: FloatArray,
     high: FloatArray,
     active: IntArray,
-) -> tuple[FloatArray, IntArray] | None:
-    """Minimise s'As/2 - f's with low <= s <= high; None where A is not positive definite."""
+) -> tuple[FloatArray, IntArray, Factor | None] | None:
+    """Minimise s'As/2 - f's with low <= s <= high; None where A is not positive definite.
+
+    With the step and its active set comes the factor that belongs to them, if they are settled.
+    """
     f, lo, hi = force.ravel(), low.ravel(), high.ravel()
     a = active.ravel().copy()
     if damping:
         band = band.copy(order="F")
         band[0] += damping * np.maximum(band[0], 1e-12 * band[0].max())
     fixed_for_good = lo >= hi
-    step = np.zeros_like(f)
+    step, factor, changed = np.zeros_like(f), None, True
     for _ in range(MOST_SET_CHANGES):
         held = a != 0
         at = np.where(a < 0, lo, np.where(a > 0, hi, 0.0))
@@ -203,7 +253,7 @@ def _bounded_step(
         a = new
         if not changed:
             break
-    return np.clip(step, lo, hi), a.reshape(force.shape)
+    return np.clip(step, lo, hi), a.reshape(force.shape), None if changed else factor
 
 
 def _optimality(point: _Point, prior: ProcessPrior, bounds: Bounds) -> FloatArray:

@@ -165,7 +165,7 @@ LENGTHS = [
 ]
 
 
-@pytest.mark.parametrize("stature", [1.0, 1.4, 1.75, 2.1])
+@pytest.mark.parametrize("stature", [1.0, 2.1])
 @pytest.mark.parametrize(("name", "segment", "share"), LENGTHS)
 def test_a_person_of_any_stature_is_sized_to_published_proportions(
     name: str, segment: str, share: float, stature: float, recording_of
