@@ -23,7 +23,8 @@ bench: $(READY)
 	OPENBLAS_NUM_THREADS=1 $(BIN)/python benchmarks/solver_speed.py full_body 1000
 	OPENBLAS_NUM_THREADS=1 $(BIN)/python benchmarks/solver_speed.py lower_limbs 4500
 	$(BIN)/python benchmarks/solver_growth.py
-	$(BIN)/python benchmarks/trial_estimates.py
+	$(BIN)/python benchmarks/trial_estimates.py 40
+	$(BIN)/python benchmarks/calibration_coverage.py 30
 
 format: $(READY)
 	$(BIN)/ruff format .
