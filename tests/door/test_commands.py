@@ -394,3 +394,52 @@ def test_every_command_has_help_with_an_example(command: str, run: Run) -> None:
     result = run(command, "--help")
     assert result.exit_code == 0
     assert f"Example: condyle {command}" in " ".join(result.stdout.split())
+
+
+def test_a_solved_trial_has_rates_and_no_smooth_has_none(
+    study: Path, subject: Path, run: Run, tmp_path: Path
+) -> None:
+    trial = study / "step_up.c3d"
+    assert run("solve", subject, trial, "-o", tmp_path / "as_one", "--to", 1.0).exit_code in (0, 1)
+    alone = run("solve", subject, trial, "-o", tmp_path / "alone", "--to", 1.0, "--no-smooth")
+    assert alone.exit_code in (0, 1)
+    one, each = (
+        pd.read_parquet(tmp_path / name / "step_up/coordinates.parquet")
+        for name in ("as_one", "alone")
+    )
+    for suffix in ("rate", "rate.sd", "accel", "accel.sd"):
+        assert f"knee_flexion_right.{suffix}" in one
+        assert f"knee_flexion_right.{suffix}" not in each
+    time, angle = one["time"], one["knee_flexion_right"]
+    inner = slice(1, -1)  # numpy's own ends are of first order
+    np.testing.assert_allclose(
+        one["knee_flexion_right.rate"][inner], np.gradient(angle, time)[inner], atol=4.0
+    )
+    meanings = pd.read_csv(tmp_path / "as_one/step_up/columns.csv").set_index("column")
+    assert set(one.columns) <= set(meanings.index)
+    assert meanings.loc["knee_flexion_right.rate", "unit"] == "deg/s"
+    segments = pd.read_parquet(tmp_path / "as_one/step_up/segments.parquet")
+    assert {"vx", "vy", "vz", "wx", "wy", "wz"} <= set(segments.columns)
+    report = json.loads((tmp_path / "as_one/step_up/fit.json").read_text())
+    assert report["smoothed"]
+    assert report["smoothing"]["order"] in (3, 4)
+    parts = report["uncertainty"]["parts"]["knee_flexion_right"]
+    told = parts["white_noise"] + parts["markers_persisting"] + parts["calibration"]
+    assert told == pytest.approx(1.0, abs=0.1)
+    assert report["backend"]["name"] in ("compiled", "replay", "casadi")
+    lonely = json.loads((tmp_path / "alone/step_up/fit.json").read_text())
+    assert not lonely["smoothed"]
+    assert lonely["smoothing"] is None
+
+
+def test_an_unknown_loss_is_refused_and_a_known_one_is_kept(
+    study: Path, subject: Path, run: Run, tmp_path: Path
+) -> None:
+    trial = study / "step_up.c3d"
+    refused = run("solve", subject, trial, "-o", tmp_path / "x", "--loss", "absolute")
+    assert refused.exit_code == 2
+    assert "squares, huber, geman_mcclure" in refused.stderr
+    assert not (tmp_path / "x").exists()
+    done = run("solve", subject, trial, "-o", tmp_path / "y", "--to", 0.4, "--loss", "huber")
+    assert done.exit_code in (0, 1)
+    assert json.loads((tmp_path / "y/step_up/fit.json").read_text())["loss"] == "huber"
