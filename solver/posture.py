@@ -82,9 +82,11 @@ def quaternions_of(stack: Rotation) -> FloatArray:
 
 
 def continuous(quaternions: FloatArray) -> FloatArray:
-    """(frames, 4) The same orientations, each in the sign that lies nearer to the one before."""
-    turns = np.where((quaternions[1:] * quaternions[:-1]).sum(axis=1) < 0, -1.0, 1.0)
-    return quaternions * np.cumprod(np.concatenate([[1.0], turns]))[:, None]
+    """(frames, ..., 4) The same orientations, each in the sign that lies nearer to the one before."""
+    nearer = (quaternions[1:] * quaternions[:-1]).sum(axis=-1, keepdims=True) >= 0
+    first = np.ones((1, *quaternions.shape[1:-1], 1))
+    turns = np.concatenate([first, np.where(nearer, 1.0, -1.0)])
+    return np.asarray(quaternions * np.cumprod(turns, axis=0))
 
 
 def upright_posture(scalars: FloatArray, balls: int, frames: int) -> Posture:

@@ -12,7 +12,7 @@ import pandas as pd
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
-from condyle.solver.posture import quaternions_of
+from condyle.solver.posture import continuous, quaternions_of
 from condyle.solver.results import FittedMotion, TimeDerivatives, TrialFit
 
 FloatArray = NDArray[np.float64]
@@ -131,9 +131,7 @@ def continuous_quaternions(rotation: FloatArray) -> FloatArray:
     frames, segments = rotation.shape[:2]
     stack = Rotation.from_matrix(rotation.reshape(-1, 3, 3))
     q = quaternions_of(stack).reshape(frames, segments, 4)
-    first = np.where(q[:1, :, :1] < 0, -1.0, 1.0)
-    turns = np.where((q[1:] * q[:-1]).sum(axis=2, keepdims=True) < 0, -1.0, 1.0)
-    return np.asarray(q * np.cumprod(np.concatenate([first, turns]), axis=0))
+    return continuous(q * np.where(q[:1, :, :1] < 0, -1.0, 1.0))
 
 
 def summary_table(fit: TrialFit) -> pd.DataFrame:
