@@ -66,9 +66,12 @@ class Factor:
         return np.asarray(found[:, 0])
 
 
-def factored(band: FloatArray) -> Factor | None:
-    """The factor of a banded matrix, None where it is not positive definite."""
-    factor, info = lapack.dpbtrf(band, lower=1, overwrite_ab=0)
+def factored(band: FloatArray, *, in_place: bool = False) -> Factor | None:
+    """The factor of a banded matrix, None where it is not positive definite.
+
+    In place, the factor stands where the band stood.
+    """
+    factor, info = lapack.dpbtrf(band, lower=1, overwrite_ab=int(in_place))
     return Factor(factor) if info == 0 else None
 
 
@@ -78,9 +81,16 @@ def times(band: FloatArray, x: FloatArray) -> FloatArray:
     return np.asarray(blas.dsbmv(width, 1.0, band, x, lower=1))
 
 
-def without(band: FloatArray, fixed: BoolArray) -> FloatArray:
-    """A copy in which the rows and columns of fixed unknowns are those of the identity."""
-    result = band.copy(order="F")
+def without(band: FloatArray, fixed: BoolArray, room: FloatArray | None = None) -> FloatArray:
+    """A copy in which the rows and columns of fixed unknowns are those of the identity.
+
+    Parameters
+    ----------
+    room : array, optional
+        Of the band's size, to hold the copy.
+    """
+    result = np.empty_like(band) if room is None else room
+    np.copyto(result, band)
     result[:, fixed] = 0.0
     places = np.flatnonzero(fixed)
     for below in range(1, len(band)):

@@ -30,7 +30,8 @@ def white_covariances(
     frames, n = plan.bounds.pinned.shape
     H = plan.problem.information(posture, np.arange(frames))
     _, turns = plan.prior.residuals(posture)
-    factor = factored(without(system_band(H, plan.prior, turns), plan.bounds.pinned.ravel()))
+    band = system_band(H, plan.prior, turns)
+    factor = factored(without(band, plan.bounds.pinned.ravel(), band), in_place=True)
     if factor is None:
         raise np.linalg.LinAlgError("a trial's information is not positive definite")
     white, rates, accelerations = (np.zeros((frames, n, n)) for _ in range(3))

@@ -90,10 +90,11 @@ def minimise_trial(
     active = np.where((high <= 0) & (point.force > 0) & (active == 0), 1, active)
     damping, exact, converged, rounds = 0.0, True, False, 0
     band = point.band(problem, prior, exact=exact)
+    room = np.empty_like(band)
     while rounds < MOST_ROUNDS and damping < MOST_DAMPING and not converged:
         rounds += 1
         low, high = bounds.steps(here)
-        found = _bounded_step(band, damping, point.force, low, high, active)
+        found = _bounded_step(band, damping, point.force, low, high, active, room)
         if found is None:
             # Not near a minimum: where a frame's own second derivative bends down, turn it up.
             if exact:
@@ -225,10 +226,12 @@ def _bounded_step(
     low: FloatArray,
     high: FloatArray,
     active: IntArray,
+    room: FloatArray,
 ) -> tuple[FloatArray, IntArray, Factor | None] | None:
     """Minimise s'As/2 - f's with low <= s <= high; None where A is not positive definite.
 
-    With the step and its active set comes the factor that belongs to them, if they are settled.
+    With the step and its active set comes the factor that belongs to them, if they are settled; it
+    stands in `room`, an array of the band's size.
     """
     f, lo, hi = force.ravel(), low.ravel(), high.ravel()
     a = active.ravel().copy()
@@ -240,7 +243,7 @@ def _bounded_step(
     for _ in range(MOST_SET_CHANGES):
         held = a != 0
         at = np.where(a < 0, lo, np.where(a > 0, hi, 0.0))
-        factor = factored(without(band, held))
+        factor = factored(without(band, held, room), in_place=True)
         if factor is None:
             return None
         rhs = np.where(held, at, f - times(band, at) if at.any() else f)
