@@ -43,6 +43,8 @@ class SkeletonFunctions:
     ties : TieEquations
     limited_balls : spherical joints with a cone or a twist range
     pulled_balls : spherical joints with a pull to rest
+    moves_segment : (freedoms, segments) bool
+        Whether a freedom moves a segment at all.
     moves_marker : (freedoms, markers) bool
         Whether a freedom moves a marker at all.
     stepper : Stepper
@@ -70,7 +72,9 @@ class SkeletonFunctions:
         self._poses: FrameFunction = over_frames(
             ca.Function("poses", inputs, [ca.densify(ca.vertcat(*poses))])
         )
-        self.moves_marker = self._moves_marker()
+        self.moves_segment = self._moves_segment()
+        owners = [skeleton.segment_index(marker.segment) for marker in skeleton.markers]
+        self.moves_marker = self.moves_segment[:, np.array(owners, dtype=int)]
         self.stepper: Stepper = stepper_of(self.normal_equations.pattern)
 
     @property
@@ -98,7 +102,7 @@ class SkeletonFunctions:
         poses[..., 3, 3] = 1.0
         return poses
 
-    def _moves_marker(self) -> BoolArray:
+    def _moves_segment(self) -> BoolArray:
         skeleton, freedoms = self.skeleton, self.kinematics.freedoms
         ancestors: list[set[int]] = []
         for i, joint in enumerate(skeleton.joints):
@@ -106,11 +110,9 @@ class SkeletonFunctions:
             if joint.parent != LABORATORY:
                 above = ancestors[skeleton.segment_index(joint.parent)]
             ancestors.append(above | {i})
-        moves = np.zeros((freedoms.size, len(skeleton.markers)), dtype=bool)
+        moves = np.zeros((freedoms.size, len(skeleton.segments)), dtype=bool)
         for screw in self.kinematics.screws:
-            for m, marker in enumerate(skeleton.markers):
-                if screw.joint in ancestors[skeleton.segment_index(marker.segment)]:
-                    moves[screw.freedom, m] = True
+            moves[screw.freedom] |= [screw.joint in above for above in ancestors]
         return moves
 
 

@@ -10,6 +10,7 @@ bridged: the freedom then stays at rest there, and its sd is missing.
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
@@ -50,6 +51,60 @@ def bridged(determined: BoolArray, precision: float, order: int, most_sd: float)
         if np.sqrt(variance) <= most_sd:
             result[start:end] = True
     return result
+
+
+def bridged_together(
+    bridges: BoolArray, determined: BoolArray, told_in_part: BoolArray, share: MarkerShare
+) -> BoolArray:
+    """(frames, freedoms) The bridges that nothing at rest stands beside.
+
+    A marker that moves with several undetermined freedoms tells no more than what they come to together:
+    with one of them at rest, the others would take its part. So they are bridged all or none, and
+    over their whole gaps.
+
+    Parameters
+    ----------
+    bridges, determined : (frames, freedoms) bool
+    told_in_part : (frames, freedoms) bool
+        Undetermined, though a marker moves with it.
+    share : MarkerShare
+    """
+    result = bridges.copy()
+    while True:
+        resting = told_in_part & ~result
+        rows = np.flatnonzero(resting.any(axis=1) & (told_in_part & result).any(axis=1))
+        touched = share.beside(resting[rows], told_in_part[rows], rows)
+        lost = np.zeros_like(result)
+        lost[rows] = touched & result[rows]
+        if not lost.any():
+            return result
+        for d in np.flatnonzero(lost.any(axis=0)):
+            gap = np.cumsum(np.r_[0, np.diff(determined[:, d].astype(np.int8)) != 0])
+            result[np.isin(gap, gap[lost[:, d]]), d] = False
+
+
+@dataclass(frozen=True, slots=True)
+class MarkerShare:
+    """Which freedoms share a marker, or a tie, that is there.
+
+    Attributes
+    ----------
+    moves : (freedoms, markers) bool
+    there : (frames, markers) bool
+    """
+
+    moves: BoolArray
+    there: BoolArray
+
+    def beside(self, some: BoolArray, of: BoolArray, rows: NDArray[np.int64]) -> BoolArray:
+        """(rows, freedoms) Those `of` some, reached from `some` from marker to marker."""
+        reached = some
+        while True:
+            markers = (reached @ self.moves) & self.there[rows]
+            further = reached | (of & (markers @ self.moves.T))
+            if (further == reached).all():
+                return np.asarray(reached)
+            reached = further
 
 
 def _run(determined: BoolArray) -> int:

@@ -89,6 +89,12 @@ def continuous(quaternions: FloatArray) -> FloatArray:
     return np.asarray(quaternions * np.cumprod(turns, axis=0))
 
 
+def held_over(quaternions: FloatArray, known: NDArray[np.bool_]) -> FloatArray:
+    """(frames, 4) The same orientations, where one is not known the last that is (or the first)."""
+    last = np.maximum.accumulate(np.where(known, np.arange(len(known)), -1))
+    return quaternions[np.where(last < 0, int(np.argmax(known)), last)]
+
+
 def upright_posture(scalars: FloatArray, balls: int, frames: int) -> Posture:
     """`frames` copies of one posture whose orientations are all identity."""
     identity = np.tile([1.0, 0.0, 0.0, 0.0], (frames, balls, 1))

@@ -47,6 +47,10 @@ COARSE_RATIOS, RATIO_TOLERANCE = 9, 0.05
 """Places of the first search in log r, and how far the second goes: r within 5 per cent."""
 FEWEST_FRAMES = 20
 """Below this nothing can be read from a series, and it is not smoothed."""
+LONGEST_HOLE = 150
+"""Frames. At longer runs without an estimate a series is cut into pieces that know nothing of each other:
+next to nothing is known across, and over some 400 the system is not positive definite in double
+precision any more."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,14 +109,23 @@ def _of_order(
     freedoms = series.shape[1]
     ratio, kappa = np.zeros(freedoms), np.full(freedoms, least_kappa)
     likelihood, moving = np.zeros(freedoms), np.zeros(freedoms, dtype=bool)
-    for d in np.flatnonzero(seen.sum(axis=0) >= FEWEST_FRAMES):
+    for d in np.flatnonzero([bool(pieces(column)) for column in seen.T]):
         one = _Series(series[:, d], variance[:, d], seen[:, d], order)
         ratio[d], kappa[d], likelihood[d], moving[d] = one.best(least_kappa)
     return likelihood, Evidence(order, ratio, kappa, moving)
 
 
+def pieces(seen: BoolArray) -> list[slice]:
+    """The parts of a series without a long hole, from their first estimate to their last."""
+    at = np.flatnonzero(seen)
+    runs = np.split(at, np.flatnonzero(np.diff(at) > LONGEST_HOLE) + 1)
+    return [slice(int(r[0]), int(r[-1]) + 1) for r in runs if len(r) >= FEWEST_FRAMES]
+
+
 def smoothed(series: FloatArray, precision: FloatArray, ratio: float, order: int) -> FloatArray:
     """Series (frames, m) smoothed one by one: min of (y - q)'W(y - q) + r |Dq|^2.
+
+    Straight across long holes, and level beyond the ends.
 
     Parameters
     ----------
@@ -121,10 +134,43 @@ def smoothed(series: FloatArray, precision: FloatArray, ratio: float, order: int
     ratio : float
         r.
     """
-    band = ratio * _squares_band(order, len(series))
-    band[0] += precision
-    _, found, info = lapack.dpbsv(band, precision[:, None] * series, lower=1, overwrite_ab=1)
-    return np.asarray(found) if info == 0 else series
+    result, known = series.copy(), precision > 0
+    for part in pieces(known):
+        weight, known[part] = precision[part], True
+        band = ratio * _squares_band(order, len(weight))
+        band[0] += weight
+        _, found, info = lapack.dpbsv(band, weight[:, None] * series[part], lower=1)
+        if info == 0:
+            result[part] = found
+    frames = np.arange(len(series))
+    if known.any() and not known.all():
+        for column in result.T:
+            column[~known] = np.interp(frames[~known], frames[known], column[known])
+    return result
+
+
+@dataclass(frozen=True, slots=True)
+class _Piece:
+    """A part of a series without a long hole; precision in units of the series' median."""
+
+    y: FloatArray
+    precision: FloatArray
+    order: int
+    squares: FloatArray
+
+    def at(self, log_ratio: float) -> tuple[float, float]:
+        """RSS and log det A - (N - p) log r; infinite where rounding spoils A."""
+        band = np.exp(log_ratio) * self.squares
+        band[0] += self.precision
+        rhs = self.precision * self.y
+        factor, solution, info = lapack.dpbsv(band, rhs[:, None], lower=1, overwrite_ab=1)
+        if info != 0:
+            return np.inf, np.inf
+        x = solution[:, 0]
+        rss = float(self.precision @ (self.y - x) ** 2)
+        rss += float(np.exp(log_ratio) * (np.diff(x, self.order) ** 2).sum())
+        determinant = 2 * float(np.log(factor[0]).sum()) - (len(self.y) - self.order) * log_ratio
+        return rss, determinant
 
 
 class _Series:
@@ -134,31 +180,23 @@ class _Series:
         self._order = order
         precision = np.where(seen, 1 / np.where(seen, variance, 1.0), 0.0)
         self._scale = float(np.median(precision[seen]))
-        self._precision = precision / self._scale
         # A constant costs the process nothing: without it RSS loses fewer digits.
-        self._y = np.where(seen, y - np.median(y[seen]), 0.0)
-        self._free = int(seen.sum()) - order
-        self._squares = _squares_band(order, len(y))
-        spread = max(float(np.var(self._y[seen])), np.finfo(float).tiny)
-        self._constant = (
-            self._free * np.log(2 * np.pi)
-            - _log_determinant(order, len(y))
-            + order * np.log(2 * np.pi * len(y) * spread)
-        )
+        y = np.where(seen, y - np.median(y[seen]), 0.0)
+        spread = max(float(np.var(y[seen])), np.finfo(float).tiny)
+        self._pieces, self._free, self._constant = [], 0, 0.0
+        for part in pieces(seen):
+            frames = part.stop - part.start
+            squares = _squares_band(order, frames)
+            self._pieces.append(_Piece(y[part], precision[part] / self._scale, order, squares))
+            self._free += int(seen[part].sum()) - order
+            self._constant += order * np.log(2 * np.pi * frames * spread)
+            self._constant -= _log_determinant(order, frames)
+        self._constant += self._free * np.log(2 * np.pi)
 
     def _at(self, log_ratio: float) -> tuple[float, float]:
         """RSS and log det A - (N - p) log r, precisions in units of their median."""
-        band = np.exp(log_ratio) * self._squares
-        band[0] += self._precision
-        rhs = self._precision * self._y
-        factor, solution, info = lapack.dpbsv(band, rhs[:, None], lower=1, overwrite_ab=1)
-        if info != 0:
-            return np.inf, np.inf
-        x = solution[:, 0]
-        rss = float(self._precision @ (self._y - x) ** 2)
-        rss += float(np.exp(log_ratio) * (np.diff(x, self._order) ** 2).sum())
-        determinant = 2 * float(np.log(factor[0]).sum()) - (len(self._y) - self._order) * log_ratio
-        return max(rss, np.finfo(float).tiny), determinant
+        rss, determinant = np.sum([piece.at(log_ratio) for piece in self._pieces], axis=0)
+        return max(float(rss), np.finfo(float).tiny), float(determinant)
 
     def best(self, least_kappa: float) -> tuple[float, float, float, bool]:
         """Give r, kappa and the log likelihood at the maximum, and whether anything moves."""

@@ -28,7 +28,7 @@ from condyle.solver.joint_angles import report_angles
 from condyle.solver.over_frames import over_frames
 from condyle.solver.posture import Posture, rotations
 from condyle.solver.results import Column, DoubtShares
-from condyle.solver.time_derivatives import derivatives
+from condyle.solver.time_derivatives import derivatives, whole_windows
 from condyle.solver.trial_estimate import TrialEstimate
 
 FloatArray = NDArray[np.float64]
@@ -90,11 +90,12 @@ def report_derivatives(
     Returns
     -------
     rates, rates_sd, accelerations, accelerations_sd : (frames, columns)
-        Per second and second squared; NaN where undetermined or near a reported singularity.
+        Per second and second squared; NaN near a reported singularity, and where any of the five
+        frames that tell them is undetermined.
     """
     pieces = _pieces(kinematics, estimate.fits.posture)
     steep = _side_by_side([_steepness(piece) for piece in pieces], len(told.values))
-    hidden = told.involved | (steep > 1 / np.sin(NEAR_SINGULAR))
+    hidden = ~whole_windows(~told.involved) | (steep > 1 / np.sin(NEAR_SINGULAR))
     found = []
     first, second = derivatives(told.values, rate)
     for values, covariance in (

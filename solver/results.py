@@ -105,7 +105,8 @@ class TimeDerivatives:
     accelerations, accelerations_sd : (frames, columns) rad/s^2 or m/s^2
         NaN where undetermined, and near the singularity of a reported sequence.
     linear, angular : (frames, segments, 3) m/s and rad/s
-        Of the segments' origins and of the segments, in laboratory axes.
+        Of the segments' origins and of the segments, in laboratory axes; NaN in the frames in which
+        an undetermined coordinate jumps to rest or back.
     """
 
     rates: FloatArray

@@ -11,7 +11,13 @@ from numpy.typing import NDArray
 
 from condyle.solver.block_banded import FRAMES_A_BLOCK, factored, selected_inverse, without
 from condyle.solver.posture import Posture
-from condyle.solver.time_derivatives import POINTS, derivatives, first_frames, formulas
+from condyle.solver.time_derivatives import (
+    POINTS,
+    derivatives,
+    first_frames,
+    formulas,
+    whole_windows,
+)
 from condyle.solver.trial_plan import TrialPlan, freedom_series
 from condyle.solver.trial_smoother import system_band
 
@@ -52,41 +58,55 @@ def white_covariances(
             half = np.einsum("ra,aibj->ribj", window, blocks)
             result[rows] = np.einsum("rb,ribj->rij", window, half) * scale
     free = ~plan.bounds.pinned
-    for result in (white, rates, accelerations):
-        result *= free[:, :, None] & free[:, None, :]
+    moving = whole_windows(free)
+    for result, told in ((white, free), (rates, moving), (accelerations, moving)):
+        result *= told[:, :, None] & told[:, None, :]
     return white, rates, accelerations
 
 
-def lasting_covariance(plan: TrialPlan) -> FloatArray:
-    """(frames, freedoms, freedoms) The persisting part; across a gap, that of its edges."""
+def lasting_covariance(plan: TrialPlan, part: slice) -> FloatArray:
+    """(frames, freedoms, freedoms) The persisting part in some frames; across a gap, that of its edges.
+
+    Parameters
+    ----------
+    plan : TrialPlan
+        Of the whole trial: a gap's edges may lie outside the part.
+    """
     # One share for all: the scatter of each freedom's own kappa would pass for persisting error.
     kappa = float(np.median(plan.evidence.kappa[plan.evidence.ratio > 0]))
-    lasting = plan.own_covariance * max(1 - kappa**2, 0.0)
-    frames = np.arange(len(lasting))
-    variance = np.einsum("nii->ni", lasting).copy()
-    known, estimated = plan.own_known, plan.estimated
-    for d in np.flatnonzero((estimated & ~known).any(axis=0)):
-        gap = estimated[:, d] & ~known[:, d]
+    share = max(1 - kappa**2, 0.0)
+    lasting = plan.own_covariance[part] * share
+    frames, known = np.arange(len(plan))[part], plan.own_known
+    gaps = plan.estimated[part] & ~known[part]
+    for d in np.flatnonzero(gaps.any(axis=0)):
+        gap = gaps[:, d]
         lasting[gap, d, :] = 0.0
         lasting[gap, :, d] = 0.0
         at = np.flatnonzero(known[:, d])
-        lasting[gap, d, d] = np.interp(frames[gap], at, variance[at, d])
+        variance = share * plan.own_covariance[at, d, d]
+        lasting[gap, d, d] = np.interp(frames[gap], at, variance)
     return lasting
 
 
 def quickness(plan: TrialPlan, rate: float) -> tuple[float, float]:
-    """1/s and 1/s^2: how fast, beside how far, the trial's turns go (root of variance ratios)."""
-    series = freedom_series(plan.problem, plan.start)
-    first, second = derivatives(series, rate)
+    """1/s and 1/s^2: how fast, beside how far, the trial's turns go (root of variance ratios).
+
+    Where a freedom is not told it jumps to rest, which is no movement.
+    """
+    series = freedom_series(plan.problem, plan.start, plan.estimated)
+    told = whole_windows(plan.estimated)
     scalars = plan.problem.functions.kinematics.freedoms.scalars
     units = {c.name: c.unit for c in plan.problem.functions.skeleton.coordinates}
     turning = np.array(
         [units[name] == "rad" for name in scalars] + [True] * (series.shape[1] - len(scalars))
     )
-    spread = float(series[:, turning].var(axis=0).sum())
-    if spread <= 0:
+    counted = turning & told.any(axis=0)
+
+    def spread(values: FloatArray) -> float:
+        return float(values[:, counted].var(axis=0, where=told[:, counted]).sum())
+
+    whole = spread(series)
+    if whole <= 0:
         return 0.0, 0.0
-    return (
-        float(np.sqrt(first[:, turning].var(axis=0).sum() / spread)),
-        float(np.sqrt(second[:, turning].var(axis=0).sum() / spread)),
-    )
+    speed, bend = (float(np.sqrt(spread(d) / whole)) for d in derivatives(series, rate))
+    return speed, bend

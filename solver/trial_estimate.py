@@ -25,7 +25,7 @@ from condyle.solver.least_squares import Solution
 from condyle.solver.posture import Posture
 from condyle.solver.process_evidence import Evidence
 from condyle.solver.trial_covariance import lasting_covariance, quickness, white_covariances
-from condyle.solver.trial_plan import TrialPlan, plan_trial
+from condyle.solver.trial_plan import TrialPlan, plan_trial, rest_sds
 from condyle.solver.trial_smoother import SmoothSolution, minimise_trial
 
 FloatArray = NDArray[np.float64]
@@ -108,7 +108,7 @@ def smooth_trial(
         part = plan.window(outer)
         found = minimise_trial(part.problem, part.prior, part.start, part.bounds)
         white, rates, accelerations = white_covariances(part, found.posture, rate)
-        lasting = lasting_covariance(part)
+        lasting = lasting_covariance(plan, outer)
         kept = slice(inner.start - outer.start, inner.stop - outer.start)
         parts.append(
             _Part(
@@ -140,14 +140,37 @@ def memory(plan: TrialPlan) -> int:
 
     Notes
     -----
-    Solutions of (1 - z)^p (1 - 1/z)^p r + w = 0 decay by exp(-(w / r)^(1/2p) sin(pi/2p)) a frame.
+    Solutions of (1 - z)^p (1 - 1/z)^p r + w = 0 decay by exp(-(w / r)^(1/2p) sin(pi/2p)) a frame, w being
+    the precision of a frame; within a gap nothing is forgotten, unless by a pull.
     """
     order, ratio = plan.prior.order, plan.evidence.ratio
     variance = np.einsum("nii->ni", plan.own_covariance)
-    smoothed = ratio > 0
-    typical = np.array([np.median(v[v > 0]) for v in variance.T[smoothed]])
-    slowest = (ratio[smoothed] * typical).max() ** (-1 / (2 * order))
-    return int(np.ceil(-np.log(FORGOTTEN) / (slowest * np.sin(np.pi / (2 * order)))))
+    smoothed = np.flatnonzero(ratio > 0)
+    typical = [np.median(v[v > 0]) for v in variance.T[smoothed]]
+    across = 0.0
+    pull = _pull_precisions(plan)
+    gaps = plan.estimated & ~plan.own_known
+    for d in np.flatnonzero(gaps.any(axis=0) & (ratio > 0)):
+        pulled = _forgetting(ratio[d] / pull[d], order) if pull[d] > 0 else np.inf
+        across = max(across, min(_longest_run(gaps[:, d]), pulled))
+    return int(np.ceil(_forgetting(float((ratio[smoothed] * typical).max()), order) + across))
+
+
+def _forgetting(ratio: float, order: int) -> float:
+    """Frames, for r / w."""
+    rate = ratio ** (-1 / (2 * order)) * np.sin(np.pi / (2 * order))
+    return float(-np.log(FORGOTTEN) / rate)
+
+
+def _pull_precisions(plan: TrialPlan) -> FloatArray:
+    """(freedoms,) What a frame's pull to rest weighs; 0 where there is none."""
+    share = plan.problem.pull_share
+    return np.nan_to_num(rest_sds(plan.problem) ** -2 * (1.0 if share is None else share))
+
+
+def _longest_run(flags: BoolArray) -> int:
+    edges = np.flatnonzero(np.diff(np.r_[False, flags, False].astype(np.int8)))
+    return int((edges[1::2] - edges[::2]).max(initial=0))
 
 
 def windows(frames: int, overlap: int, window: int) -> list[tuple[slice, slice]]:

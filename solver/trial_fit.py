@@ -36,7 +36,7 @@ from condyle.solver.reported import Reported, doubt_shares, report, report_deriv
 from condyle.solver.results import FittedMotion, Smoothing, TimeDerivatives, TrialFit
 from condyle.solver.robust_loss import Loss
 from condyle.solver.subject_covariance import SubjectCovariance
-from condyle.solver.time_derivatives import segment_velocities
+from condyle.solver.time_derivatives import segment_velocities, whole_windows
 from condyle.solver.trial_estimate import TrialEstimate, smooth_trial
 from condyle.solver.upright import Upright
 
@@ -256,6 +256,8 @@ def _with_motion(
     kinematics = problem.functions.kinematics
     told = report(kinematics, estimate.fits)
     linear, angular = segment_velocities(fit.motion.laboratory_from_segment, fit.rate)
+    jumps = _at_jumps(problem, estimate.fits.involved)
+    linear[jumps], angular[jumps] = np.nan, np.nan
     derived = report_derivatives(kinematics, estimate, told, fit.rate)
     names = [column.name for column in told.columns]
     bridged = (report(kinematics, frames).involved & ~told.involved).sum(axis=0)
@@ -272,6 +274,12 @@ def _with_motion(
             bridged={n: int(c) for n, c in zip(names, bridged, strict=True) if c},
         ),
     )
+
+
+def _at_jumps(problem: FrameProblem, involved: NDArray[np.bool_]) -> NDArray[np.bool_]:
+    """(frames, segments) Where a freedom that moves a segment goes to rest or comes from it."""
+    jumps = ~(whole_windows(involved) | whole_windows(~involved))
+    return np.asarray(jumps @ problem.functions.moves_segment)
 
 
 def _outliers(problem: FrameProblem, fits: FrameFits) -> NDArray[np.bool_]:

@@ -11,12 +11,18 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.model.skeleton import Spherical
+from condyle.model.skeleton import Moves, Spherical
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.frame_problem import FrameProblem
-from condyle.solver.gap_bridging import MOST_SD_SHIFT, MOST_SD_TURN, bridged
+from condyle.solver.gap_bridging import (
+    MOST_SD_SHIFT,
+    MOST_SD_TURN,
+    MarkerShare,
+    bridged,
+    bridged_together,
+)
 from condyle.solver.least_squares import Bounds
-from condyle.solver.posture import Posture, continuous
+from condyle.solver.posture import Posture, continuous, held_over
 from condyle.solver.process_evidence import Evidence, smoothed, weigh
 from condyle.solver.process_prior import ProcessPrior, mean_reversion
 from condyle.solver.time_derivatives import POINTS, ball_series
@@ -89,10 +95,11 @@ def plan_trial(problem: FrameProblem, fits: FrameFits) -> TrialPlan | None:
     # What only a pull holds is no observation: with markers elsewhere in the trial it is bridged,
     # without any it keeps the pull as each frame's prior.
     determined = problem.shown() & ~(fits.involved | problem.functions.held)
+    fits = _unwound(problem, fits, determined)
     evidence = _evidence(problem, fits, determined)
     if not (evidence.ratio > 0).any():
         return None
-    bridges = _bridges(problem, evidence, determined)
+    bridges = _bridges(problem, evidence, determined, fits.involved)
     estimated = determined | bridges
     own = fits.solution.bounds
     return TrialPlan(
@@ -108,10 +115,49 @@ def plan_trial(problem: FrameProblem, fits: FrameFits) -> TrialPlan | None:
     )
 
 
-def freedom_series(problem: FrameProblem, posture: Posture) -> FloatArray:
-    """(frames, freedoms) Series without jumps whose differences are those of the freedoms."""
-    balls = [ball_series(posture.quaternions[:, b]) for b in range(posture.quaternions.shape[1])]
+def _unwound(problem: FrameProblem, fits: FrameFits, determined: BoolArray) -> FrameFits:
+    """The fits, with coordinates that may go round without end freed of jumps by whole turns.
+
+    A frame's markers do not tell whole turns, unless the coordinate drives something else.
+    """
+    skeleton = problem.functions.skeleton
+    motions = [joint.motion for joint in skeleton.joints if isinstance(joint.motion, Moves)]
+    driving = {move.follows for motion in motions for move in motion.moves}
+    scalars = fits.posture.scalars.copy()
+    for k, c in enumerate(c for c in skeleton.coordinates if c.follows is None):
+        endless = c.unit == "rad" and not c.has_range and c.rest_sd is None
+        if endless and c.name not in driving:
+            told = determined[:, k]
+            scalars[told, k] = np.unwrap(scalars[told, k])
+    posture = replace(fits.posture, scalars=scalars)
+    return replace(fits, solution=replace(fits.solution, posture=posture))
+
+
+def freedom_series(problem: FrameProblem, posture: Posture, known: BoolArray) -> FloatArray:
+    """(frames, freedoms) Series without jumps whose differences are those of the freedoms.
+
+    Orientations that are not known keep the last that is: turns to rest and back do not cancel.
+    """
+    balls = []
+    for b in range(posture.quaternions.shape[1]):
+        here = problem.functions.kinematics.freedoms.ball_slice(b)
+        told = np.asarray(known[:, here].all(axis=1))
+        balls.append(ball_series(held_over(posture.quaternions[:, b], told)))
     return np.concatenate([posture.scalars, *balls], axis=1)
+
+
+def rest_sds(problem: FrameProblem) -> FloatArray:
+    """(freedoms,) rad or m; NaN where there is no pull."""
+    functions = problem.functions
+    freedoms = functions.kinematics.freedoms
+    rest_sd = np.full(freedoms.size, np.nan)
+    for k, c in enumerate(c for c in functions.skeleton.coordinates if c.follows is None):
+        rest_sd[k] = np.nan if c.rest_sd is None else c.rest_sd
+    for joint in functions.skeleton.joints:
+        if isinstance(joint.motion, Spherical) and joint.motion.rest_sd is not None:
+            here = freedoms.ball_slice(freedoms.balls.index(joint.name))
+            rest_sd[here] = joint.motion.rest_sd
+    return rest_sd
 
 
 def _evidence(
@@ -124,11 +170,13 @@ def _evidence(
     free = determined & ~fits.at_limit & (variance > 0)
     placed = problem.weights.max(axis=0)
     sd = 1 / np.sqrt(placed[placed > 0])
-    series = freedom_series(problem, fits.posture)
+    series = freedom_series(problem, fits.posture, determined)
     return weigh(series, variance, free, least_kappa=LEAST_WHITE / float(np.median(sd)))
 
 
-def _bridges(problem: FrameProblem, evidence: Evidence, determined: BoolArray) -> BoolArray:
+def _bridges(
+    problem: FrameProblem, evidence: Evidence, determined: BoolArray, involved: BoolArray
+) -> BoolArray:
     """(frames, freedoms) Where a freedom is told from its neighbours; a ball's three go together."""
     precision, pulled = evidence.ratio / evidence.kappa**2, problem.pulled()
     scalars = problem.functions.kinematics.freedoms.scalars
@@ -142,11 +190,15 @@ def _bridges(problem: FrameProblem, evidence: Evidence, determined: BoolArray) -
             if pulled[d]
             else bridged(determined[:, d], precision[d], evidence.order, most)
         )
-    for b in range(len(problem.functions.kinematics.freedoms.balls)):
-        here = problem.functions.kinematics.freedoms.ball_slice(b)
-        whole = np.asarray((determined[:, here] | result[:, here]).all(axis=1))
-        result[:, here] &= whole[:, None]
-    return result
+    ties = problem.functions.ties.moved_by
+    balls = np.zeros((len(ties), len(problem.functions.kinematics.freedoms.balls)), dtype=bool)
+    for b in range(balls.shape[1]):
+        balls[problem.functions.kinematics.freedoms.ball_slice(b), b] = True
+    told_in_part = involved & problem.shown() | ~determined & balls.any(axis=1)
+    moves = np.column_stack([problem.functions.moves_marker, ties, balls])
+    always = np.ones((len(problem), 1 + balls.shape[1]), dtype=bool)
+    share = MarkerShare(moves, np.column_stack([problem.weights > 0, always]))
+    return bridged_together(result, determined, told_in_part, share)
 
 
 def _linked(estimated: BoolArray, order: int) -> BoolArray:
@@ -163,16 +215,8 @@ def _pull_share(problem: FrameProblem, evidence: Evidence) -> FloatArray:
 
     A freedom that is not smoothed keeps its pull as a frame's prior.
     """
-    functions = problem.functions
-    freedoms = functions.kinematics.freedoms
-    share = np.ones(freedoms.size)
-    rest_sd = np.full(freedoms.size, np.nan)
-    for k, c in enumerate(c for c in functions.skeleton.coordinates if c.follows is None):
-        rest_sd[k] = np.nan if c.rest_sd is None else c.rest_sd
-    for joint in functions.skeleton.joints:
-        if isinstance(joint.motion, Spherical) and joint.motion.rest_sd is not None:
-            here = freedoms.ball_slice(freedoms.balls.index(joint.name))
-            rest_sd[here] = joint.motion.rest_sd
+    rest_sd = rest_sds(problem)
+    share = np.ones(len(rest_sd))
     pulled = np.isfinite(rest_sd) & (evidence.ratio > 0)
     r = evidence.ratio[pulled]
     pull = mean_reversion(rest_sd[pulled], r / evidence.kappa[pulled] ** 2, evidence.order)
@@ -204,7 +248,8 @@ def _smooth_start(
         here = problem.functions.kinematics.freedoms.ball_slice(b)
         if not (evidence.ratio[here] > 0).all():
             continue
-        components = continuous(quaternions[:, b])
+        told = np.asarray(determined[:, here].all(axis=1))
+        components = continuous(held_over(quaternions[:, b], told))
         ratio = float(np.exp(np.log(evidence.ratio[here]).mean()))
         found = smoothed(components, weight[:, here].min(axis=1), ratio, order)
         length = np.linalg.norm(found, axis=1)

@@ -26,8 +26,8 @@ IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
 TOLERANCE, NEWTON_TOLERANCE = 1e-8, 1e-6
-"""Finished when the predicted gain, sqrt(2 gain), is below this share of sqrt(2 cost). A step with the exact
-second derivative squares it, so such a step need not be confirmed by another."""
+"""Finished when the predicted gain, sqrt(2 gain), is below this share of sqrt(2 cost) or of 1. A step with the
+exact second derivative squares it, so such a step need not be confirmed by another."""
 MOST_ROUNDS = 60
 MOST_SET_CHANGES = 12
 MOST_CHORDS, SHORTER = 8, 0.1
@@ -108,11 +108,11 @@ def minimise_trial(
         there = bounds.inside(here.after(step.reshape(point.force.shape)))
         new = _Point.at(problem, prior, there)
         tolerance = NEWTON_TOLERANCE if exact else TOLERANCE
-        small = np.sqrt(2 * abs(gain)) <= tolerance * np.sqrt(2 * point.cost)
+        small = _is_small(gain, point.cost, tolerance)
         ratio = (point.cost - new.cost) / gain if gain > 0 else -1.0
         if new.cost <= point.cost * (1 + ROUNDING):
             here, point, exact = there, new, True
-            converged = bool(small) and damping <= LEAST_DAMPING
+            converged = small and damping <= LEAST_DAMPING
             if ratio > 0.5 or small:
                 damping = damping / 10 if damping > LEAST_DAMPING else 0.0
             if not converged and damping == 0 and factor is not None:
@@ -177,6 +177,11 @@ def _turned_up(H: FloatArray, information: FloatArray) -> FloatArray:
     return np.asarray(blocks * root[:, :, None] * root[:, None, :])
 
 
+def _is_small(gain: float, cost: float, tolerance: float) -> bool:
+    """Whether a predicted gain is next to nothing beside the cost, or beside one sd in all."""
+    return bool(np.sqrt(2 * abs(gain)) <= tolerance * max(np.sqrt(2 * cost), 1.0))
+
+
 def _polished(
     problem: FrameProblem,
     prior: ProcessPrior,
@@ -203,7 +208,7 @@ def _polished(
         if new.cost > point.cost * (1 + ROUNDING):
             break
         here, point, before = there, new, gain
-        if np.sqrt(2 * abs(gain)) <= TOLERANCE * np.sqrt(2 * point.cost):
+        if _is_small(gain, point.cost, TOLERANCE):
             pushed = (active * point.force >= 0) | bounds.pinned
             return here, point, bool(pushed.all())
     return here, point, False

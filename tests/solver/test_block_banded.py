@@ -81,3 +81,42 @@ def test_blocks_of_frames_stand_on_the_diagonal() -> None:
     x = rng.normal(0, 1, 12)
     expected = np.einsum("nij,nj->ni", H, x.reshape(3, 4)).ravel()
     np.testing.assert_allclose(times(band_of_frames(H, 9), x), expected, atol=1e-12)
+
+
+@pytest.mark.parametrize("frames", [1, FRAMES_A_BLOCK - 1, FRAMES_A_BLOCK, FRAMES_A_BLOCK + 1])
+def test_the_inverse_of_few_frames_is_whole(frames: int) -> None:
+    n = 3
+    dense, band = made(frames, n, min(7, frames * n - 1), seed=frames)
+    factor = factored(band)
+    assert factor is not None
+    inverse = np.linalg.inv(dense)
+    for first, joint in selected_inverse(factor, n):
+        here = slice(first * n, first * n + len(joint))
+        np.testing.assert_allclose(joint, inverse[here, here], rtol=1e-9, atol=1e-12)
+
+
+def test_room_that_was_used_before_is_written_over() -> None:
+    dense, band = made(7, 3, 8, seed=21)
+    fixed = np.random.default_rng(5).random(21) < 0.4
+    fresh = without(band, fixed)
+    expected = np.where(fixed[:, None] | fixed, np.eye(21), dense)
+    x = np.random.default_rng(6).normal(0, 1, 21)
+    np.testing.assert_allclose(times(fresh, x), expected @ x, rtol=1e-12, atol=1e-12)
+    dirty = np.full(band.shape, 7.0, order="F")
+    np.testing.assert_array_equal(without(band, fixed, dirty), fresh)
+    kept = band.copy(order="F")
+    np.testing.assert_array_equal(without(kept, fixed, kept), fresh)  # where it stood
+    H = np.tile(np.diag([1.0, 2.0, 3.0]), (7, 1, 1))
+    np.testing.assert_array_equal(band_of_frames(H, 8, dirty), band_of_frames(H, 8))
+
+
+def test_a_factor_in_place_is_the_same_factor_and_stands_there() -> None:
+    _, band = made(8, 3, 8, seed=22)
+    apart = factored(band)
+    untouched = band.copy(order="F")
+    within = factored(untouched, in_place=True)
+    assert apart is not None
+    assert within is not None
+    np.testing.assert_array_equal(within.band, apart.band)
+    assert np.shares_memory(within.band, untouched)
+    assert not np.shares_memory(apart.band, band)

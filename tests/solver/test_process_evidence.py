@@ -6,7 +6,14 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from condyle.solver.process_evidence import _log_determinant, _Series, smoothed, weigh
+from condyle.solver.process_evidence import (
+    LONGEST_HOLE,
+    _log_determinant,
+    _Series,
+    pieces,
+    smoothed,
+    weigh,
+)
 
 FloatArray = NDArray[np.float64]
 NOISE = 0.005
@@ -109,3 +116,84 @@ def test_too_few_frames_are_not_smoothed() -> None:
     y = np.random.default_rng(0).normal(0, 1, (50, 1))
     seen = np.arange(50)[:, None] < 10
     assert weigh(y, np.ones((50, 1)), seen, least_kappa=0.01).ratio[0] == 0.0
+
+
+@pytest.mark.parametrize("order", [3, 4])
+@pytest.mark.parametrize("hole", [40, 200, 450, 900, 3000])
+def test_a_hole_of_any_length_leaves_noise_and_process_as_they_are(order: int, hole: int) -> None:
+    """A time out of sight: over some hundred frames, r D'D + W has no factor in double precision."""
+    kappas, ratios = [], []
+    for seed in range(6):
+        y = simulated(order, 5.0, 600 + hole, seed)
+        seen = np.ones(len(y), dtype=bool)
+        seen[300 : 300 + hole] = False
+        series = _Series(y, np.full(len(y), (2 * NOISE) ** 2), seen, order)
+        ratio, kappa, likelihood, _ = series.best(0.01)
+        assert np.isfinite(likelihood)
+        kappas.append(kappa)
+        ratios.append(np.log(ratio * (2 * NOISE) ** 2))
+    assert np.mean(kappas) == pytest.approx(0.5, rel=0.05)
+    true = -2 * order * np.log(2 * np.sin(np.pi * 0.05))
+    assert np.mean(ratios) == pytest.approx(true, abs=0.6)
+
+
+def test_a_long_hole_does_not_change_the_order() -> None:
+    fine = np.stack([simulated(4, 5.0, 1600, seed) for seed in range(3)], axis=1)
+    seen = np.full(fine.shape, True)
+    seen[400:1200, 1] = False
+    found = weigh(fine, np.full(fine.shape, NOISE**2), seen, least_kappa=0.01)
+    assert found.order == 4
+    np.testing.assert_allclose(found.kappa, 1, rtol=0.15)
+
+
+def test_series_are_cut_at_long_holes_only() -> None:
+    seen = np.zeros(1000, dtype=bool)
+    seen[10:60] = True
+    seen[60 + LONGEST_HOLE - 1 : 300] = True  # near enough
+    seen[300 + LONGEST_HOLE + 1 : 500] = True  # too far
+    seen[900:910] = True  # too few
+    assert pieces(seen) == [slice(10, 300), slice(300 + LONGEST_HOLE + 1, 500)]
+    assert pieces(np.zeros(50, dtype=bool)) == []
+
+
+def test_the_likelihood_of_two_pieces_is_that_of_each() -> None:
+    y, variance = simulated(4, 5.0, 1200, 1), np.full(1200, NOISE**2)
+    seen = np.ones(1200, dtype=bool)
+    seen[400:800] = False
+    first, last = (y[part] for part in (slice(0, 400), slice(800, 1200)))
+    both = _Series(y, variance, seen, 4)._at(3.0)
+    alone = [_Series(z, variance[:400], seen[:400], 4)._at(3.0) for z in (first, last)]
+    np.testing.assert_allclose(both, np.sum(alone, axis=0), rtol=1e-6)
+
+
+def test_smoothing_goes_straight_across_a_long_hole_and_level_beyond_the_ends() -> None:
+    y = simulated(4, 5.0, 1000, 2)
+    precision = np.full(1000, NOISE**-2)
+    precision[:50] = precision[300:700] = 0.0
+    x = smoothed(y[:, None], precision, 1e4 / NOISE**2, 4)[:, 0]
+    np.testing.assert_allclose(np.diff(x[299:701], 2), 0, atol=1e-12)
+    assert (x[:50] == x[50]).all()
+    D = np.diff(np.eye(250), 4, axis=0)
+    A = NOISE**-2 * (np.eye(250) + 1e4 * D.T @ D)
+    np.testing.assert_allclose(x[50:300], np.linalg.solve(A, y[50:300] / NOISE**2), rtol=1e-6)
+
+
+def test_a_constant_series_stands_still_at_the_floor() -> None:
+    found = weigh(
+        np.full((300, 1), 0.4), np.full((300, 1), 1e-4), np.full((300, 1), True), least_kappa=0.02
+    )
+    assert not found.moving[0]
+    assert found.kappa[0] == pytest.approx(0.02)
+    assert np.isfinite(found.ratio[0])
+    x = smoothed(np.full((300, 1), 0.4), np.full(300, 1e4), found.ratio[0], found.order)
+    np.testing.assert_allclose(x, 0.4, atol=1e-5)  # a thousandth of the sd
+
+
+def test_scattered_gaps_are_no_loss() -> None:
+    y = simulated(4, 5.0, 800, 5)
+    seen = np.random.default_rng(2).random(800) > 0.3
+    spoilt = np.where(seen, y, 1e3)  # what stands in a gap is nobody's concern
+    variance = np.full((800, 1), NOISE**2)
+    found = weigh(spoilt[:, None], variance, seen[:, None], least_kappa=0.01)
+    assert found.kappa[0] == pytest.approx(1.0, rel=0.15)
+    assert found.moving[0]

@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 from scipy.integrate import quad
+from scipy.linalg import solveh_banded
 from scipy.spatial.transform import Rotation
 
 from condyle.solver.posture import Posture, quaternions_of
@@ -97,3 +98,29 @@ def test_a_mean_reverting_process_has_the_stationary_sd_that_was_asked(order: in
 def test_difference_weights_are_binomial() -> None:
     np.testing.assert_array_equal(difference_weights(3), [-1, 3, -3, 1])
     np.testing.assert_array_equal(difference_weights(4), [1, -4, 6, -4, 1])
+
+
+@pytest.mark.parametrize(("order", "density"), [(3, 2e4), (4, 3e5)])
+def test_a_long_mean_reverting_series_has_that_sd_in_its_middle(order: int, density: float) -> None:
+    """The inverse of the banded precision s (D'D + L) of a long series, by scipy."""
+    sd, frames = 0.7, 900
+    (pull,) = mean_reversion(np.array([sd]), np.array([density]), order)
+    D = np.diff(np.eye(frames), order, axis=0)
+    precision = density * (D.T @ D + pull * np.eye(frames))
+    band = np.zeros((order + 1, frames))
+    for below in range(order + 1):
+        band[below, : frames - below] = np.diagonal(precision, -below)
+    unit = np.zeros(frames)
+    unit[frames // 2] = 1.0
+    variance = solveh_banded(band, unit, lower=True)[frames // 2]
+    assert np.sqrt(variance) == pytest.approx(sd, rel=0.02)
+
+
+@pytest.mark.parametrize("order", [3, 4])
+def test_what_is_not_linked_costs_nothing_and_pushes_nothing(order: int) -> None:
+    rng = np.random.default_rng(7)
+    size = SCALARS + 3 * BALLS
+    none = ProcessPrior(order, np.ones(size), np.zeros((FRAMES - order, size), dtype=bool))
+    posture = wild(rng)
+    assert (none.cost(posture) == 0).all()
+    assert (none.force(*none.residuals(posture)) == 0).all()

@@ -12,6 +12,7 @@ from condyle.solver.time_derivatives import (
     derivatives,
     formulas,
     segment_velocities,
+    whole_windows,
 )
 
 RATE = 100.0
@@ -73,3 +74,50 @@ def test_a_balls_series_has_the_turns_as_its_steps() -> None:
     series = ball_series(np.stack([quaternions_of(r) for r in path]))
     np.testing.assert_allclose(np.diff(series, axis=0), steps, atol=1e-12)
     assert series[0] == pytest.approx([0, 0, 0])
+
+
+def test_the_one_sided_formulas_are_fornbergs() -> None:
+    """Fornberg 1988, table 3: five points, at the edge; rational weights, so exact."""
+    first, second = formulas(5, 1.0)
+    np.testing.assert_allclose(first[0], np.array([-25, 48, -36, 16, -3]) / 12, atol=1e-12)
+    np.testing.assert_allclose(second[0], np.array([35, -104, 114, -56, 11]) / 12, atol=1e-12)
+    np.testing.assert_allclose(first[4], -first[0][::-1], atol=1e-12)
+    np.testing.assert_allclose(second[4], second[0][::-1], atol=1e-12)
+
+
+def test_at_the_ends_the_formulas_are_as_bad_as_they_say() -> None:
+    """Taylor: h^4 f^(5) / 5 of the first derivative, 5 h^3 f^(5) / 6 of the second."""
+    w, time = 2 * np.pi * 2, np.arange(400) / RATE
+    worst = [0.0, 0.0]
+    for phase in np.linspace(0, np.pi, 16):
+        first, second = derivatives(np.sin(w * time + phase), RATE)
+        for i, (told, true, size) in enumerate(
+            (
+                (first, w * np.cos(w * time + phase), w),
+                (second, -(w**2) * np.sin(w * time + phase), w**2),
+            )
+        ):
+            worst[i] = max(worst[i], float(np.abs(told - true)[[0, -1]].max() / size))
+    h = w / RATE
+    assert worst[0] == pytest.approx(h**4 / 5, rel=0.25)
+    assert worst[1] == pytest.approx(5 * h**3 / 6, rel=0.25)
+
+
+def test_a_window_is_whole_where_all_five_of_its_frames_are() -> None:
+    told = np.ones((12, 2), dtype=bool)
+    told[6, 0] = False
+    whole = whole_windows(told)
+    np.testing.assert_array_equal(np.flatnonzero(~whole[:, 0]), [4, 5, 6, 7, 8])
+    assert whole[:, 1].all()
+    told[:, 1] = np.arange(12) != 0
+    np.testing.assert_array_equal(np.flatnonzero(~whole_windows(told)[:, 1]), [0, 1, 2])
+    assert not whole_windows(np.ones((4, 1), dtype=bool)).any()
+
+
+def test_an_even_spin_is_told_to_the_ends() -> None:
+    spin = np.array([0.0, 12.0, 5.0])
+    time = np.arange(20) / RATE
+    poses = np.tile(np.eye(4), (20, 1, 1, 1))
+    poses[:, 0, :3, :3] = Rotation.from_rotvec(time[:, None] * spin).as_matrix()
+    _, angular = segment_velocities(poses, RATE)
+    np.testing.assert_allclose(angular[[0, 1, -2, -1], 0], np.tile(spin, (4, 1)), atol=1e-9)
