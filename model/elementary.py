@@ -12,7 +12,6 @@ from typing import Any
 import casadi as ca
 import numpy as np
 from numpy.typing import NDArray
-from scipy.interpolate import CubicSpline
 
 from condyle.model.skeleton import Polynomial, Spline, Turn, Vector
 
@@ -81,6 +80,9 @@ def _polynomial(function: Polynomial, x: Expression) -> Expression:
 
 def _natural_spline(function: Spline, x: Expression) -> Expression:
     """The natural cubic through the points; its end pieces continue as straight lines."""
+    # Heavy, and few models have one.
+    from scipy.interpolate import CubicSpline
+
     knots, values = np.array(function.points).T
     spline = CubicSpline(knots, values, bc_type="natural")
     first, last = (0.0, 0.0, float(spline(knots[0], 1))), (0.0, 0.0, float(spline(knots[-1], 1)))

@@ -2,7 +2,8 @@
 
 Decided here: only a joint with moves has axes to turn, because the turn T of T M T^-1 would vanish
 in a fixed joint and in the free orientation of a spherical or floating one; a floating joint has no
-place to free either, since its position is a coordinate. A centre regression needs all four of
+place to free either, since its position is a coordinate. What a base model frees of a joint falls away
+where an extending file takes the joint out or makes it another kind: nobody there wrote it. A centre regression needs all four of
 the pelvis' spines, and a centre that is clearly to one side, so that right and left are told apart.
 """
 
@@ -18,6 +19,42 @@ from condyle.model.tree import Mistakes, Node, node_at
 
 SPINES = ("ASIS_right", "ASIS_left", "PSIS_right", "PSIS_left")
 """The landmarks of the pelvis (ISB, Wu et al. 2002) that the centre regressions start from."""
+
+
+def without_idle_freedoms(tree: Node) -> Node:
+    """The merged tree without what a base model frees of joints that are not there, or not so, any more."""
+    sizing = tree.entries.get("sizing")
+    freed = None if sizing is None else sizing.entries.get("joints")
+    if sizing is None or freed is None or not freed.entries:
+        return tree
+    joints = tree.entries["joints"].entries if "joints" in tree.entries else {}
+    kept = {}
+    for name, entry in freed.entries.items():
+        if entry.file != tree.file and entry.entries:
+            entry = _still_meant(entry, joints.get(name), tree)
+            if not entry.entries:
+                continue
+        kept[name] = entry
+    inner = {**sizing.entries, "joints": freed.with_value(kept)}
+    return tree.with_value({**tree.entries, "sizing": sizing.with_value(inner)})
+
+
+def _still_meant(entry: Node, joint: Node | None, tree: Node) -> Node:
+    """What an inherited entry can still free of its joint."""
+    if joint is None:
+        return entry.with_value({})
+    idle = set()
+    if "moves" not in joint.entries:
+        idle.add("axis_sd")
+    if "floating" in joint.entries:
+        idle |= {"place_sd", "centre_from"}
+    parent = joint.entries.get("from")
+    landmarks = node_at(tree, "segments", str(parent.value if parent else ""), "landmarks").entries
+    if not set(SPINES) <= set(landmarks):
+        idle.add("centre_from")
+    return entry.with_value(
+        {k: v for k, v in entry.entries.items() if k not in idle or v.file == tree.file}
+    )
 
 
 def check_freed_joints(model: ModelEntry, tree: Node, mistakes: Mistakes) -> None:

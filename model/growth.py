@@ -133,7 +133,13 @@ def number_layout(skeleton: Skeleton) -> NumberLayout:
 
 
 def grown_numbers_expression(
-    skeleton: Skeleton, factors: Expression, marker_at: Expression, upright: Expression
+    skeleton: Skeleton,
+    factors: Expression,
+    marker_at: Expression,
+    upright: Expression,
+    *,
+    departures: Mapping[str, Expression] | None = None,
+    axis_turns: Mapping[str, Expression] | None = None,
 ) -> Expression:
     """The flat vector of numbers as an expression.
 
@@ -142,7 +148,10 @@ def grown_numbers_expression(
     factors : (3 segments) size factors, x, y, z of each segment in turn
     marker_at : (3 markers) m, in the sized segments
     upright : (9) laboratory-from-upright, row by row
+    departures : joint -> (3) m, of its centre from the grown one, in the sized parent
+    axis_turns : joint -> (3) rad, in place of what the skeleton has
     """
+    departures, axis_turns = departures or {}, axis_turns or {}
     row = {segment.name: 3 * i for i, segment in enumerate(skeleton.segments)}
 
     def of(segment: str) -> Expression:
@@ -151,7 +160,9 @@ def grown_numbers_expression(
         return factors[row[segment] : row[segment] + 3]
 
     at = [
-        ca.SX(ca.DM(joint.placed)) if joint.placed else of(joint.parent) * ca.DM(joint.at)
+        ca.SX(ca.DM(joint.placed))
+        if joint.placed
+        else of(joint.parent) * ca.DM(joint.at) + departures.get(joint.name, 0)
         for joint in skeleton.joints
     ]
     in_child = [of(joint.child) * ca.DM(joint.in_child) for joint in skeleton.joints]
@@ -160,7 +171,10 @@ def grown_numbers_expression(
         turn = joint.turned if isinstance(joint.turned, Turn) else None
         axis_in_parent = rotation_of_turn(turn) @ np.array(move.axis)
         gains.append(ca.norm_2(of(joint.parent) * ca.DM(axis_in_parent)))
-    turns = [ca.SX(ca.DM(j.axis_turn or (0.0, 0.0, 0.0))) for j in turning_joints(skeleton)]
+    turns = [
+        axis_turns.get(j.name, ca.SX(ca.DM(j.axis_turn or (0.0, 0.0, 0.0))))
+        for j in turning_joints(skeleton)
+    ]
     ties = [of(segment) * ca.DM(place) for segment, place in tie_places(skeleton)]
     return ca.densify(ca.vertcat(*at, *in_child, *gains, marker_at, upright, *turns, *ties))
 

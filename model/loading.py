@@ -10,6 +10,7 @@ from condyle.model.checking import check_model
 from condyle.model.coordinates import Declared
 from condyle.model.errors import Mistake, ModelError, unknown_name
 from condyle.model.extending import find_model, merged_tree, refuse_idle_nulls, shipped_models
+from condyle.model.freed_joints import without_idle_freedoms
 from condyle.model.language import ModelEntry
 from condyle.model.mirroring import mirrored
 from condyle.model.segment_checks import mesh_path
@@ -77,6 +78,7 @@ def _checked(name_or_path: str | Path) -> tuple[ModelEntry, dict[str, Declared],
     if merged is None:
         raise mistakes.report()
     tree = refuse_idle_nulls(mirrored(merged.tree, mistakes), mistakes)
+    tree = without_idle_freedoms(tree)
     if "name" not in tree.entries:
         name = tree.with_value(Path(str(source)).stem)
         tree = tree.with_value({**tree.entries, "name": name})

@@ -4,6 +4,7 @@ from condyle.recording.c3d import read_c3d
 from condyle.recording.c3d_writing import write_c3d
 from condyle.recording.describing import RecordingReport, describe, report_lines
 from condyle.recording.labels import LabelMatch, match_labels, read_label_map
+from condyle.recording.lengths import read_lengths
 from condyle.recording.point_names import is_unnamed
 from condyle.recording.reading import read_recording
 from condyle.recording.recording import AnalogSignals, Event, ForcePlate, Recording
@@ -25,6 +26,7 @@ __all__ = [
     "match_labels",
     "read_c3d",
     "read_label_map",
+    "read_lengths",
     "read_recording",
     "read_table",
     "report_lines",

@@ -160,8 +160,16 @@ def table_numbers(table: pa.Table) -> FloatArray:
     numbers = np.empty((table.num_rows, table.num_columns))
     for index, column in enumerate(table.columns):
         row = 0
-        for chunk in column.chunks:
-            numbers[row : row + len(chunk), index] = chunk.to_numpy(zero_copy_only=False)
+        for chunk in (chunk for chunk in column.chunks if len(chunk)):
+            # From its buffers: Arrow's own way to numpy fetches pandas, which takes a third of a second.
+            there, values = chunk.buffers()
+            here = slice(chunk.offset, chunk.offset + len(chunk))
+            found = np.frombuffer(values, dtype=np.float64, count=here.stop)[here]
+            if there is not None:
+                bits = np.frombuffer(there, dtype=np.uint8)
+                known = np.unpackbits(bits, count=here.stop, bitorder="little")[here]
+                found = np.where(known, found, np.nan)
+            numbers[row : row + len(chunk), index] = found
             row += len(chunk)
     return numbers
 

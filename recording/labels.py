@@ -11,15 +11,12 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from ruamel.yaml import YAML
-from ruamel.yaml.error import MarkedYAMLError, YAMLError
-from ruamel.yaml.nodes import MappingNode, Node, ScalarNode
+from ruamel.yaml.nodes import MappingNode, ScalarNode
 
 from condyle.model.errors import Mistake, ModelError
 from condyle.model.whole_files import whole_file
 from condyle.recording.point_names import split_prefix
-
-LARGEST_MAP = 1_000_000
-"""Bytes; a map of a thousand markers takes 50 000."""
+from condyle.recording.small_yaml import compose, is_null, mistake
 
 EXAMPLE = "write one 'model marker name: label in the recording' a line"
 
@@ -100,7 +97,7 @@ def read_label_map(path: Path) -> dict[str, str]:
         With every mistake, its file and line.
     """
     path = Path(path)
-    root = compose(path)
+    root = compose(path, EXAMPLE)
     if root is None:
         return {}
     if not isinstance(root, MappingNode):
@@ -129,46 +126,6 @@ def read_label_map(path: Path) -> dict[str, str]:
     if mistakes:
         raise ModelError(mistakes)
     return result
-
-
-def is_null(node: ScalarNode) -> bool:
-    """Whether a plain scalar means nothing at all."""
-    return node.style is None and node.value in ("", "~", "null", "Null", "NULL")
-
-
-def compose(path: Path) -> Node | None:
-    """The file as YAML nodes: nothing is constructed, so no tag can do harm."""
-    try:
-        if path.is_file() and path.stat().st_size > LARGEST_MAP:
-            raise at_line(path, 1, "this is far too large for a label map", EXAMPLE)
-        text = path.read_text(encoding="utf-8")
-    except OSError as error:
-        why = error.strerror or str(error)
-        raise at_line(path, 1, f"cannot be read ({why})", "check the path") from error
-    except UnicodeDecodeError as error:
-        raise at_line(path, 1, "this is not UTF-8 text", EXAMPLE) from error
-    try:
-        node: Node | None = YAML(typ="safe", pure=True).compose(text)
-    except MarkedYAMLError as error:
-        mark = error.problem_mark or error.context_mark
-        line = mark.line + 1 if mark else 1
-        raise at_line(path, line, f"not YAML: {error.problem or error.context}", EXAMPLE) from error
-    except (YAMLError, RecursionError) as error:
-        raise at_line(path, 1, "not YAML", EXAMPLE) from error
-    return node
-
-
-def mistake(path: Path, node: Node, problem: str, remedy: str) -> Mistake:
-    """A mistake at the line of a node."""
-    line = node.start_mark.line + 1
-    return Mistake(str(path), line, f"{problem}.", f"{remedy[0].upper()}{remedy[1:]}.")
-
-
-def at_line(path: Path, line: int, problem: str, remedy: str) -> ModelError:
-    """The error of a file with one mistake."""
-    return ModelError(
-        [Mistake(str(path), line, f"{problem}.", f"{remedy[0].upper()}{remedy[1:]}.")]
-    )
 
 
 def write_label_map(path: Path, labels: Mapping[str, str]) -> None:

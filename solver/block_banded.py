@@ -1,4 +1,6 @@
-"""One symmetric system over all frames of a trial: its band, its solution, parts of its inverse.
+"""One symmetric system over all frames of a trial by LAPACK: its band, its solution, parts of its inverse.
+
+For where nothing can be compiled; `compiled_trial` does the same.
 
 Unknowns are frame-major (freedom d of frame k stands at k n + d). A process prior of order p couples
 frames at most p apart, so everything lies within p n + 2 of the diagonal, and work and memory are
@@ -18,14 +20,62 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import blas, lapack
 
+from condyle.solver.process_prior import ProcessPrior
+
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
 FRAMES_A_BLOCK = 4
 """Frames in a block of the selected inverse; any window of five frames lies in two neighbouring blocks."""
 
 
-def band_of_frames(H: FloatArray, width: int, room: FloatArray | None = None) -> FloatArray:
+def system_band(H: FloatArray, prior: ProcessPrior, turns: FloatArray) -> FloatArray:
+    """The band of frames' blocks H (frames, n, n) with the prior's J'J."""
+    band = band_of_frames(H, prior.order * H.shape[1] + (2 if turns.shape[2] else 0))
+    prior.add_to_band(band, turns)
+    return band
+
+
+def band_system(
+    H: FloatArray,
+    prior: ProcessPrior,
+    turns: FloatArray,
+    held: BoolArray,
+    extra: FloatArray | None = None,
+) -> Factor | None:
+    """The factor of a trial's system; see `trial_system.TrialSystem.solve`."""
+    band = system_band(H, prior, turns)
+    if extra is not None:
+        band[0] += extra.ravel()
+    return factored(without(band, held.ravel(), band), in_place=True)
+
+
+def banded_covariances(
+    factor: Factor, wanted: IntArray, scale: FloatArray, begin: IntArray, weights: FloatArray
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """What `trial_system.TrialSystem.covariances` gives, from a factor."""
+    frames, points = weights.shape[1:]
+    n = factor.band.shape[1] // frames
+    found = tuple(np.zeros((frames, len(wanted))) for _ in range(3))
+    rows, columns = wanted.T
+    for first, joint in selected_inverse(factor, n):
+        count = len(joint) // n
+        pairs = joint.reshape(count, n, count, n)[:, rows, :, columns]
+        own = range(first, min(first + FRAMES_A_BLOCK, frames))
+        for k in own:
+            found[0][k] = pairs[:, k - first, k - first] * scale
+        asked = np.flatnonzero((begin >= first) & (begin < first + FRAMES_A_BLOCK))
+        for result, formula in zip(found[1:], weights, strict=True):
+            window = np.zeros((len(asked), count))
+            for w in range(points):
+                window[np.arange(len(asked)), begin[asked] + w - first] = formula[asked, w]
+            half = np.einsum("ra,eab->reb", window, pairs)
+            result[asked] = np.einsum("rb,reb->re", window, half) * scale
+    return found[0], found[1], found[2]
+
+
+def band_of_frames(H: FloatArray, width: int) -> FloatArray:
     """The lower band of a block-diagonal matrix.
 
     Parameters
@@ -33,19 +83,13 @@ def band_of_frames(H: FloatArray, width: int, room: FloatArray | None = None) ->
     H : (frames, n, n) symmetric
     width : int
         Of the band below the diagonal, at least n - 1.
-    room : array, optional
-        An earlier band of this size, to be written over: new memory takes longer than the sums.
 
     Returns
     -------
     (width + 1, frames n), entry [o, j] standing at row j + o, column j; in Fortran order.
     """
     frames, n, _ = H.shape
-    if room is None:
-        band = np.zeros((width + 1, frames * n), order="F")
-    else:
-        band = room
-        band.fill(0.0)
+    band = np.zeros((width + 1, frames * n), order="F")
     by_frame = band.reshape(width + 1, n, frames, order="F")
     for column in range(n):
         by_frame[: n - column, column] = H[:, column:, column].T
@@ -87,10 +131,11 @@ def without(band: FloatArray, fixed: BoolArray, room: FloatArray | None = None) 
     Parameters
     ----------
     room : array, optional
-        Of the band's size, to hold the copy.
+        To hold the copy; the band itself, to write over it.
     """
     result = np.empty_like(band) if room is None else room
-    np.copyto(result, band)
+    if result is not band:
+        np.copyto(result, band)
     result[:, fixed] = 0.0
     places = np.flatnonzero(fixed)
     for below in range(1, len(band)):

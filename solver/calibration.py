@@ -1,50 +1,44 @@
-"""Sizing a skeleton to one person: from a static trial to a sized skeleton with placed markers.
+"""Sizing a skeleton to one person: from a static trial, and movement, to a sized skeleton.
 
-What is estimated, and from what, stands in `sizing_problem`; here the static is checked, the estimate
-made and put into words.
+What is estimated, and from what, stands in `person_problem`; here recordings are checked, the estimate
+is started (from the static alone, then with frames of movement) and put into words.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.errors import FitError
-from condyle.model.skeleton import Marker, Person, Skeleton
+from condyle.model.skeleton import Skeleton
 from condyle.recording.recording import Recording, is_seen, mean_positions
-from condyle.recording.still import StillPart, still_part
+from condyle.recording.still import still_part
 from condyle.solver.blas_threads import one_thread
+from condyle.solver.calibrated import Sources, calibrated
 from condyle.solver.cold_start import fit_cold
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
-from condyle.solver.least_squares import Bounds, Solution, minimise
-from condyle.solver.matching import (
-    MatchedMarkers,
-    check_scale,
-    choose_up,
-    match_markers,
-    root_alignment,
-)
-from condyle.solver.observability import covariance, undetermined
+from condyle.solver.least_squares import Bounds
+from condyle.solver.matching import check_scale, choose_up, match_markers, root_alignment
+from condyle.solver.moving_trials import MovingFrames, moving_frames
+from condyle.solver.observability import undetermined
+from condyle.solver.person_estimate import PersonEstimate, estimate_person
+from condyle.solver.person_functions import PersonFunctions
+from condyle.solver.person_priors import Given, PersonPriors
+from condyle.solver.person_problem import PersonProblem, PersonState
 from condyle.solver.posture import Posture
-from condyle.solver.reported import reported_values
-from condyle.solver.results import Calibration, PlacedMarker
+from condyle.solver.results import Calibration
+from condyle.solver.skin_motion import REST_SHARE, SkinMotion, skin_motion
 from condyle.solver.static_faults import check_sides
-from condyle.solver.subject_covariance import SubjectCovariance, entry_names, entry_values
 from condyle.solver.upright import Upright
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
-from condyle.solver.marker_placing import MarkerPlacing, place_markers
-from condyle.solver.sizing_functions import SizingFunctions
-from condyle.solver.sizing_problem import (
-    MEASUREMENT_SD,
-    SCALE_SD,
-    SCALE_SD_WITH_STATURE,
-    SizingProblem,
-)
+
+MEASUREMENT_SD = 0.001
+"""m per axis, of the mean over the still part; skin is counted from there (the language's rule)."""
 
 
 @one_thread
@@ -52,8 +46,10 @@ def calibrate(
     skeleton: Skeleton,
     static: Recording,
     *,
+    moving: Sequence[Recording] = (),
     stature: float | None = None,
     mass: float | None = None,
+    lengths: Mapping[str, float] | None = None,
     labels: Mapping[str, str] | None = None,
     up: str | None = None,
     start: float | None = None,
@@ -66,8 +62,12 @@ def calibrate(
     skeleton : Skeleton
         With its nominal places; what an earlier calibration placed is not used.
     static : Recording
+    moving : Recordings, optional
+        Trials in which the same person moves; they tell joint centres and axes.
     stature, mass : float, optional
         m and kg of this person.
+    lengths : segment -> m, optional
+        Measured with a tape.
     labels : model marker -> label in the recording, optional
     up : str, optional
         The laboratory axis that points up.
@@ -90,15 +90,28 @@ def calibrate(
     alignment = root_alignment(functions, mean)
     upright = choose_up(functions, static, mean, asked=up)
     check_sides(functions, static, mean, alignment)
-    problem = _problem(functions, mean[0], upright, stature)
-    solution, free = _minimised(problem, mean, float(np.log(max(alignment.scale[0], 0.1))))
-    return _assembled(problem, solution, free, still, matched, (stature, mass), static)
+    person = PersonFunctions(functions)
+    priors = PersonPriors(skeleton, person.layout, Given(stature, lengths))
+    estimate = _from_static(person, priors, mean, upright, float(alignment.scale[0]))
+    sources = Sources(static, tuple(moving), still, matched, upright, stature, mass)
+    found = calibrated(estimate, sources)
+    if not moving:
+        return found
+    frames = moving_frames(
+        found.skeleton, functions, moving, estimate.state.posture, upright, labels
+    )
+    estimate = estimate_person(*_with_movement(estimate, frames))
+    return calibrated(estimate, sources, frames)
 
 
 def unsized(skeleton: Skeleton) -> Skeleton:
-    """The reference person again: no sizes, no placed markers."""
+    """The reference person again: no sizes, nothing that a calibration found."""
     markers = tuple(replace(m, placed=None, placed_sd=None) for m in skeleton.markers)
-    return replace(skeleton, markers=markers, sizes={})
+    joints = tuple(
+        replace(j, placed=None, placed_sd=None, axis_turn=None, axis_turn_sd=None)
+        for j in skeleton.joints
+    )
+    return replace(skeleton, markers=markers, joints=joints, sizes={})
 
 
 def _check_person(skeleton: Skeleton, stature: float | None, mass: float | None) -> None:
@@ -120,136 +133,122 @@ def _check_person(skeleton: Skeleton, stature: float | None, mass: float | None)
             )
 
 
-def _problem(
-    functions: SkeletonFunctions, mean: FloatArray, upright: Upright, stature: float | None
-) -> SizingProblem:
+def _from_static(
+    person: PersonFunctions,
+    priors: PersonPriors,
+    mean: FloatArray,
+    upright: Upright,
+    scale: float,
+) -> PersonEstimate:
+    """The estimate from the mean pose of the static alone."""
+    functions = person.functions
     skeleton = functions.skeleton
     present = is_seen(mean)
     known = np.array([m.at is not None for m in skeleton.markers])
-    within = np.array([m.placed_within for m in skeleton.markers])
     if (present & known).sum() < 3:
         raise FitError(
             f"the static shows {int((present & known).sum())} of the markers that {skeleton.name} "
             "has a nominal place for; sizing needs at least 3.\n"
             "  Check the labels, or give --labels MAP.yaml (model marker: label in the recording)."
         )
-    scale = (0.0, SCALE_SD)
-    if stature is not None and skeleton.person is not None:
-        scale = (float(np.log(stature / skeleton.person.stature)), SCALE_SD_WITH_STATURE)
-    return SizingProblem(
-        functions,
-        np.nan_to_num(mean),
-        np.where(present & known, 1 / (within**2 + MEASUREMENT_SD**2), 0.0),
-        upright,
-        scale,
-        SizingFunctions(functions),
+    size = functions.kinematics.freedoms.size
+    problem = PersonProblem(
+        functions=person,
+        measured=np.nan_to_num(mean),
+        weights=np.where(present, MEASUREMENT_SD**-2, 0.0),
+        standing=np.ones(1, dtype=bool),
+        upright=upright,
+        skin=skin_motion(functions, present, np.zeros(1, dtype=bool), np.zeros((1, size))),
+        priors=priors,
+        bounds=_bounds(functions, np.zeros((1, size), dtype=bool)),
     )
+    vector = np.zeros(person.layout.size)
+    vector[: person.layout.groups + 1] = np.log(max(scale, 0.1))
+    state = _started(problem, vector, present & known)
+    pins, _ = undetermined(problem.information_of_postures(state), ~problem.bounds.pinned)
+    pinned = problem.bounds.pinned | pins
+    problem = replace(problem, bounds=replace(problem.bounds, pinned=pinned))
+    return estimate_person(problem, state)
 
 
-def _minimised(
-    problem: SizingProblem, mean: FloatArray, log_scale: float
-) -> tuple[Solution, BoolArray]:
-    """The estimate, and which freedoms it determines."""
-    groups = problem.evaluator.groups
-    sizes = np.full(groups, log_scale)
+def _started(problem: PersonProblem, vector: FloatArray, used: BoolArray) -> PersonState:
+    """A cold start of the posture, everything of one size, markers free to depart."""
+    functions, skeleton = problem.functions.functions, problem.functions.functions.skeleton
+    within = np.array([m.placed_within for m in skeleton.markers])
+    nominal, _ = problem.functions.nominal_places(vector)
     frame = FrameProblem(
-        problem.functions,
-        np.nan_to_num(mean),
-        problem.weights[None],
-        problem.evaluator.numbers(sizes, problem.upright),
+        functions,
+        problem.measured,
+        np.where(used, 1 / (within**2 + MEASUREMENT_SD**2), 0.0),
+        problem.functions.numbers(vector, nominal, problem.upright),
     )
     first = fit_cold(frame, frame.bounds()).posture
-    bounds = problem.bounds()
-    n = problem.coordinates
-    unseen = ~frame.seen()[0, :n]
-    scalars = np.where(unseen, problem.start_scalars()[:n], first.scalars[0])
-    start = Posture(np.r_[scalars, sizes, log_scale][None], first.quaternions)
-    solution = minimise(problem, start, bounds, damping=1e-4)
-    H, _, _ = problem(solution.posture, np.arange(1))
-    pins, _ = undetermined(H, ~bounds.pinned)
-    if pins.any():
-        bounds = Bounds(bounds.lower, bounds.upper, bounds.pinned | pins)
-        solution = minimise(problem, solution.posture, bounds, damping=1e-4)
-    return solution, ~bounds.pinned
-
-
-def _assembled(
-    problem: SizingProblem,
-    solution: Solution,
-    free: BoolArray,
-    still: StillPart,
-    matched: MatchedMarkers,
-    person: tuple[float | None, float | None],
-    static: Recording,
-) -> Calibration:
-    skeleton = problem.functions.skeleton
-    n, groups = problem.coordinates, problem.evaluator.groups
-    H, _, _ = problem(solution.posture, np.arange(1))
-    cov = covariance(H, free)[0]
-    sizes = solution.posture.scalars[0, n : n + groups]
-    sizes_sd = np.sqrt(np.diag(cov)[n : n + groups])
-    placing = place_markers(problem, solution.posture, cov, matched, still)
-    placed = placing.markers
-    by_name = {marker.name: marker for marker in placed}
-    stature, mass = person
-    nan = float("nan")
-    sized = replace(
-        skeleton,
-        sizes=problem.evaluator.factors(sizes, sizes_sd),
-        markers=tuple(_with_place(m, by_name.get(m.name)) for m in skeleton.markers),
-        subject=Person(nan if stature is None else stature, nan if mass is None else mass),
-        labels={name: label for name, label in matched.labels.items() if name != label},
-        up=problem.upright.axis,
-    )
-    own = Posture(solution.posture.scalars[:, :n], solution.posture.quaternions)
-    told = reported_values(problem.functions.kinematics, own)
-    undetermined_names = tuple(
-        name
-        for name, (_, rate) in told.items()
-        if (np.abs(rate[0]) > 0)[~free[0][problem.step_columns()]].any()
-        and not _is_held(skeleton, name)
-    )
-    return Calibration(
-        skeleton=sized,
-        static=static.name,
-        still=(still.start, still.end),
-        up=problem.upright.axis,
-        up_how=problem.upright.how,
-        log_scale=float(solution.posture.scalars[0, n + groups]),
-        posture={name: float(value[0]) for name, (value, _) in told.items()},
-        undetermined=undetermined_names,
-        markers=placed,
-        without_label=matched.without_label,
-        other_labels=matched.other_labels,
-        cost=float(solution.cost[0]),
-        converged=bool(solution.converged[0]),
-        own_posture=own,
-        covariance=_joint_covariance(problem, sized, cov, placing),
+    unseen = ~frame.seen()[:, : first.scalars.shape[1]]
+    scalars = np.where(unseen, _expected(skeleton), first.scalars)
+    return PersonState(
+        problem.bounds.inside(Posture(scalars, first.quaternions)),
+        vector,
+        np.zeros((len(problem.skin), 3)),
     )
 
 
-def _joint_covariance(
-    problem: SizingProblem, sized: Skeleton, cov: FloatArray, placing: MarkerPlacing
-) -> SubjectCovariance:
-    """Of ln of the size factors and the marker places together; the static's posture summed out."""
-    n, groups = problem.coordinates, problem.evaluator.groups
-    of_sizes = np.zeros((groups, problem.freedoms))
-    of_sizes[:, n : n + groups] = np.eye(groups)
-    rates = np.concatenate([of_sizes, placing.rates.reshape(-1, problem.freedoms)])
-    own = np.concatenate([np.zeros(groups), np.repeat(placing.variance, 3)])
-    return SubjectCovariance(
-        entry_names(sized),
-        entry_values(sized),
-        rates @ cov @ rates.T + np.diag(own),
-        "the calibration's covariance",
+def _expected(skeleton: Skeleton) -> FloatArray:
+    """(scalars,) Every coordinate as expected in the static, else at rest or as held."""
+    standing = skeleton.sizing.standing
+    values = []
+    for c in skeleton.coordinates:
+        if c.follows is None:
+            value = standing[c.name].value if c.name in standing else c.rest
+            values.append(c.held if c.held is not None else value)
+    return np.array(values)
+
+
+def _bounds(functions: SkeletonFunctions, pinned: BoolArray) -> Bounds:
+    """Ranges in every frame; held coordinates are pinned, and what is named."""
+    free = [c for c in functions.skeleton.coordinates if c.follows is None]
+    lower = np.array([c.lower if c.held is None else c.held for c in free])
+    upper = np.array([c.upper if c.held is None else c.held for c in free])
+    frames = len(pinned)
+    return Bounds(np.tile(lower, (frames, 1)), np.tile(upper, (frames, 1)), pinned | functions.held)
+
+
+def _with_movement(
+    estimate: PersonEstimate, frames: MovingFrames
+) -> tuple[PersonProblem, PersonState]:
+    """The static's problem with frames of movement beside it, and where to start."""
+    problem, state = estimate.problem, estimate.state
+    functions = problem.functions.functions
+    seen = is_seen(frames.positions)
+    sd = np.array([marker.sd for marker in functions.skeleton.markers])
+    noise = (REST_SHARE * sd) ** 2 + MEASUREMENT_SD**2
+    count, size = len(seen), functions.kinematics.freedoms.size
+    bounds = _bounds(functions, np.concatenate([problem.bounds.pinned, frames.pinned]))
+    skin = skin_motion(
+        functions,
+        np.concatenate([problem.weights > 0, seen]),
+        np.r_[False, np.ones(count, dtype=bool)],
+        np.concatenate([np.zeros((1, size)), frames.turns]),
+    )
+    posture = Posture(
+        np.concatenate([state.posture.scalars, frames.posture.scalars]),
+        np.concatenate([state.posture.quaternions, frames.posture.quaternions]),
+    )
+    return replace(
+        problem,
+        measured=np.concatenate([problem.measured, np.nan_to_num(frames.positions)]),
+        weights=np.concatenate([problem.weights, np.where(seen, 1 / noise, 0.0)]),
+        standing=np.r_[True, np.zeros(count, dtype=bool)],
+        skin=skin,
+        bounds=bounds,
+    ), PersonState(
+        bounds.inside(posture), state.person, _same_places(problem.skin, skin, state.skin)
     )
 
 
-def _is_held(skeleton: Skeleton, name: str) -> bool:
-    return any(c.name == name and c.held is not None for c in skeleton.coordinates)
-
-
-def _with_place(marker: Marker, place: PlacedMarker | None) -> Marker:
-    if place is None:
-        return marker
-    return replace(marker, placed=place.placed, placed_sd=place.placed_sd)
+def _same_places(old: SkinMotion, new: SkinMotion, found: FloatArray) -> FloatArray:
+    """(rows, 3) The places found from the static, in the rows of more unknowns; the rest 0."""
+    first = {int(m): row for row, m in reversed(list(enumerate(new.marker)))}
+    unknowns = np.zeros((len(new), 3))
+    for row, m in enumerate(old.marker):
+        unknowns[first[int(m)]] = found[row]
+    return unknowns

@@ -23,6 +23,8 @@ from condyle.solver.rigid_alignment import align
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
+FRAMES_AT_ONCE = 4096
+"""That are fitted together: many enough that Python's own cost is small, few enough for the cache."""
 COARSE_STEP = 10
 """Every tenth frame is started cold; between two of them a person moves little."""
 STAGE_ROUNDS, STAGE_TOLERANCE, STAGE_DAMPING = 15, 1e-2, 1e-3
@@ -95,7 +97,57 @@ def tightened(
     damping: float,
     watch: Callable[[int], None] | None = None,
 ) -> Solution:
-    """Minimise with the ties tightened step by step down to their own sd."""
+    """Minimise with the ties tightened step by step down to their own sd.
+
+    Parameters
+    ----------
+    watch : callable, optional
+        Told after each round how many frames are unfinished.
+    """
+    frames, parts = len(problem), []
+    for first in range(0, max(frames, 1), FRAMES_AT_ONCE):
+        rows = np.arange(first, min(first + FRAMES_AT_ONCE, frames))
+        left = frames - first - len(rows)
+        parts.append(
+            _tightened(
+                problem.take(rows),
+                start.take(rows),
+                bounds.take(rows),
+                damping=damping,
+                watch=_with_more(watch, left),
+            )
+        )
+    return parts[0] if len(parts) == 1 else _joined(parts, bounds)
+
+
+def _with_more(watch: Callable[[int], None] | None, more: int) -> Callable[[int], None] | None:
+    """Who is told of a part's unfinished frames, told of those of later parts as well."""
+    return None if watch is None else lambda left: watch(left + more)
+
+
+def _joined(parts: list[Solution], bounds: Bounds) -> Solution:
+    posture = Posture(
+        np.concatenate([part.posture.scalars for part in parts]),
+        np.concatenate([part.posture.quaternions for part in parts]),
+    )
+    return Solution(
+        posture,
+        np.concatenate([part.cost for part in parts]),
+        np.concatenate([part.active for part in parts]),
+        np.concatenate([part.iterations for part in parts]),
+        np.concatenate([part.converged for part in parts]),
+        bounds,
+    )
+
+
+def _tightened(
+    problem: FrameProblem,
+    start: Posture,
+    bounds: Bounds,
+    *,
+    damping: float,
+    watch: Callable[[int], None] | None,
+) -> Solution:
     least = problem.functions.ties.sd.min(initial=np.inf)
     for softness in TIE_SOFTNESS:
         if softness > 3 * least:
@@ -218,7 +270,9 @@ def _from_neighbours(problem: FrameProblem, bounds: Bounds, solution: Solution) 
     good = np.setdiff1d(np.arange(len(problem)), bad)
     if not len(bad) or not len(good):
         return solution
-    nearest = good[np.abs(bad[:, None] - good[None, :]).argmin(axis=1)]
+    after = np.searchsorted(good, bad).clip(1, len(good) - 1) if len(good) > 1 else 0
+    before, behind = good[after - 1], good[after]
+    nearest = np.where(bad - before <= behind - bad, before, behind)
     part, limits = problem.take(bad), bounds.take(bad)
     start = _at_rest_where_pinned(part, limits, solution.posture.take(nearest))
     return _better(solution, bad, tightened(part, start, limits, damping=STAGE_DAMPING))

@@ -14,16 +14,21 @@ from numpy.typing import NDArray
 from condyle.solver.blas_threads import one_thread
 from condyle.solver.cold_start import fit_cold
 from condyle.solver.cone_limits import at_limit as ball_at_limit
+from condyle.solver.covariances import Covariances, joined, reported_pairs
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Bounds, Solution, minimise
 from condyle.solver.observability import covariance, undetermined
+from condyle.solver.packed_matrices import Pattern
 from condyle.solver.posture import Posture
 from condyle.solver.robust_loss import Loss
 
 FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
 BoolArray = NDArray[np.bool_]
 
 
+FRAMES_AT_ONCE = 512
+"""Whose whole matrices are in memory together."""
 STAGE_TOLERANCE, STAGE_ROUNDS = 1e-3, 6
 """For the stages on the way to a robust loss, whose own minima nobody asks for."""
 
@@ -37,7 +42,7 @@ class FrameFits:
     solution : Solution
     optimality : (frames,)
         The projected gradient in standard deviations, evaluated afresh.
-    covariance : (frames, freedoms, freedoms)
+    covariance : Covariances
         (J'WJ + prior)^-1 of what is determined, whatever limit is reached; 0 elsewhere.
     involved : (frames, freedoms) bool
         Freedoms that nothing determines, by themselves or in combination.
@@ -46,7 +51,7 @@ class FrameFits:
 
     solution: Solution
     optimality: FloatArray
-    covariance: FloatArray
+    covariance: Covariances
     involved: BoolArray
     at_limit: BoolArray
 
@@ -58,7 +63,11 @@ class FrameFits:
 
 @one_thread
 def fit_frames(
-    problem: FrameProblem, *, seed: int = 0, watch: Callable[[float], None] | None = None
+    problem: FrameProblem,
+    *,
+    seed: int = 0,
+    kept: Pattern | None = None,
+    watch: Callable[[float], None] | None = None,
 ) -> FrameFits:
     """Fit every frame from a cold start.
 
@@ -68,20 +77,18 @@ def fit_frames(
         With a loss, the fit by least squares is where the robust one starts.
     seed : int
         Of the random restarts.
+    kept : Pattern, optional
+        Which entries of the covariances are asked for; those of reported numbers by default.
     watch : callable, optional
         Told the share of the work done.
     """
     bounds = problem.bounds()
-    rows = np.arange(len(problem))
     solution = fit_cold(problem.with_loss(None), bounds, seed=seed, watch=watch)
     if problem.loss is not None:
         solution = _made_robust(problem, problem.loss, solution)
-    H = problem.information(solution.posture, rows)
-    pins, involved = undetermined(H, ~bounds.pinned)
+    pins, involved = _undetermined(problem, solution)
     if pins.any():
         solution = _settled(problem, solution, pins)
-        again = np.flatnonzero(pins.any(axis=1))
-        H[again] = problem.information(solution.posture.take(again), again)
     unseen = ~problem.seen()
     free = ~solution.bounds.pinned
     count = solution.posture.scalars.shape[1]
@@ -93,10 +100,40 @@ def fit_frames(
     return FrameFits(
         solution,
         solution.optimality(problem),
-        covariance(H, free),
+        _covariances(problem, solution, kept or reported_pairs(problem.functions.kinematics)),
         (involved | unseen) & ~problem.functions.held,
         at_limit,
     )
+
+
+def whole_covariances(problem: FrameProblem, solution: Solution, rows: IntArray) -> FloatArray:
+    """(rows, freedoms, freedoms) What `FrameFits.covariance` keeps a part of, in some frames."""
+    H = problem.information(solution.posture.take(rows), rows)
+    return covariance(H, ~solution.bounds.pinned[rows])
+
+
+def _covariances(problem: FrameProblem, solution: Solution, kept: Pattern) -> Covariances:
+    return joined(
+        [
+            Covariances(kept, kept.packed(whole_covariances(problem, solution, rows)))
+            for rows in _in_parts(len(problem))
+        ]
+    )
+
+
+def _undetermined(problem: FrameProblem, solution: Solution) -> tuple[BoolArray, BoolArray]:
+    """(frames, freedoms) What to pin and what takes part in what cannot be told; see `undetermined`."""
+    found = [
+        undetermined(
+            problem.information(solution.posture.take(rows), rows), ~solution.bounds.pinned[rows]
+        )
+        for rows in _in_parts(len(problem))
+    ]
+    return np.concatenate([pins for pins, _ in found]), np.concatenate([more for _, more in found])
+
+
+def _in_parts(frames: int) -> list[IntArray]:
+    return np.split(np.arange(frames), range(FRAMES_AT_ONCE, frames, FRAMES_AT_ONCE))
 
 
 def _made_robust(problem: FrameProblem, loss: Loss, solution: Solution) -> Solution:

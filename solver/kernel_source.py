@@ -13,7 +13,9 @@ from math import factorial, pi
 
 from condyle.solver.lane_program import JOINED_OPERATIONS, LANE_OPERATIONS, NUMBER_OPERATIONS
 from condyle.solver.matrix_source import MATRIX_SOURCE
+from condyle.solver.series_source import SERIES_SOURCE
 from condyle.solver.step_source import STEP_SOURCE
+from condyle.solver.trial_source import TRIAL_SOURCE
 
 LANE = 8
 """Frames in one vector: the widest registers there are hold 8 doubles; narrower ones take turns."""
@@ -173,7 +175,9 @@ def kernel_source() -> str:
     lanes = (LANE_OPERATIONS | JOINED_OPERATIONS).items()
     cases = [f"LANES({code}, {_in_lanes(text)})" for code, text in lanes]
     cases += [f"NUMBERS({code}, {text})" for code, text in NUMBER_OPERATIONS.items()]
-    return _HEAD + _SINE + _MACHINE % "\n            ".join(cases) + STEP_SOURCE + MATRIX_SOURCE
+    machine = _MACHINE % "\n            ".join(cases)
+    parts = (_HEAD, _SINE, machine, STEP_SOURCE, MATRIX_SOURCE, TRIAL_SOURCE, SERIES_SOURCE)
+    return "".join(parts)
 
 
 def _in_lanes(expression: str) -> str:

@@ -36,6 +36,23 @@ def symmetric_matrices(values: FloatArray, pairs: NDArray[np.int64], size: int) 
     return full
 
 
+def symmetric_products(values: FloatArray, pairs: NDArray[np.int64], x: FloatArray) -> FloatArray:
+    """M x (frames, size) of symmetric matrices told by their entries, as `symmetric_matrices` takes them."""
+    library = backend().library
+    (frames, size), found = x.shape, np.zeros(x.shape)
+    if values.shape != (frames, len(pairs)) or (len(pairs) and pairs.max() >= size):
+        raise ValueError(f"{values.shape} entries do not meet {x.shape} numbers")
+    if library is None:
+        return np.asarray(np.einsum("nij,nj->ni", symmetric_matrices(values, pairs, size), x))
+    values, x = np.ascontiguousarray(values), np.ascontiguousarray(x)
+    pairs = np.ascontiguousarray(pairs)
+    library.packed_times(
+        *(ctypes.c_long(k) for k in (frames, size, len(pairs))),
+        *(address(k) for k in (pairs, values, x, found)),
+    )
+    return found
+
+
 def inverses(H: FloatArray, usable: BoolArray) -> FloatArray:
     """(frames, n, n) Inverses over the usable freedoms; 0 in the rows of all others.
 

@@ -14,6 +14,9 @@ from scipy.spatial.transform import Rotation
 
 FloatArray = NDArray[np.float64]
 
+SMALL_SINE = 1e-9
+"""Of half a turn: below it, sine and angle are one to rounding."""
+
 
 @dataclass(frozen=True, slots=True)
 class Posture:
@@ -101,19 +104,45 @@ def upright_posture(scalars: FloatArray, balls: int, frames: int) -> Posture:
     return Posture(np.tile(scalars, (frames, 1)), identity)
 
 
+def turn_between(one: FloatArray, other: FloatArray) -> FloatArray:
+    """(..., 3) log(R_one' R_other) of unit quaternions (..., 4): the turn in the first one's child axes."""
+    w, v = one[..., :1], one[..., 1:]
+    there_w, there_v = other[..., :1], other[..., 1:]
+    across = np.stack(
+        [
+            v[..., 1] * there_v[..., 2] - v[..., 2] * there_v[..., 1],
+            v[..., 2] * there_v[..., 0] - v[..., 0] * there_v[..., 2],
+            v[..., 0] * there_v[..., 1] - v[..., 1] * there_v[..., 0],
+        ],
+        axis=-1,
+    )
+    cosine = w[..., 0] * there_w[..., 0] + (v * there_v).sum(axis=-1)
+    along = w * there_v - there_w * v - across
+    sine = np.sqrt((along * along).sum(axis=-1))
+    # A quaternion and its negative are one rotation; the one with w >= 0 turns by half a turn at most.
+    angle = 2 * np.arctan2(sine, np.abs(cosine))
+    factor = np.where(sine > SMALL_SINE, angle / np.maximum(sine, SMALL_SINE), 2.0)
+    return np.asarray(along * (np.where(cosine < 0, -factor, factor))[..., None])
+
+
 def inverse_right_jacobian(vectors: FloatArray) -> FloatArray:
-    """(n, 3, 3) d log(R Exp(d)) / d d at d = 0, for rotation vectors log R (n, 3).
+    """(..., 3, 3) d log(R Exp(d)) / d d at d = 0, for rotation vectors log R (..., 3).
 
     Chirikjian 2011, Stochastic Models, Information Theory, and Lie Groups, vol. 2, eq. 10.86:
     I + K/2 + (1/t^2 - (1 + cos t) / (2 t sin t)) K^2 with K the cross matrix and t the angle.
     """
-    angle = np.linalg.norm(vectors, axis=1)
-    half = np.maximum(angle, 1e-12) / 2
-    series = 1 / 12 + angle**2 / 720
-    exact = (1 - half / np.tan(half)) / np.maximum(angle, 1e-12) ** 2
+    squared = (vectors * vectors).sum(axis=-1)
+    angle = np.maximum(np.sqrt(squared), 1e-12)
+    series = 1 / 12 + squared / 720
+    exact = (1 - angle / 2 / np.tan(angle / 2)) / angle**2
     coefficient = np.where(angle < 1e-3, series, exact)
-    K = np.zeros((len(vectors), 3, 3))
-    x, y, z = vectors.T
-    K[:, 0, 1], K[:, 0, 2], K[:, 1, 2] = -z, y, -x
-    K[:, 1, 0], K[:, 2, 0], K[:, 2, 1] = z, -y, x
-    return np.asarray(np.eye(3) + K / 2 + coefficient[:, None, None] * (K @ K))
+    x, y, z = np.moveaxis(vectors, -1, 0)
+    # K^2 = v v' - t^2 I
+    J = coefficient[..., None, None] * (vectors[..., :, None] * vectors[..., None, :])
+    level = 1 - coefficient * squared
+    for i in range(3):
+        J[..., i, i] += level
+    for i, j, half in ((1, 0, z / 2), (2, 1, x / 2), (0, 2, y / 2)):
+        J[..., i, j] += half
+        J[..., j, i] -= half
+    return np.asarray(J)

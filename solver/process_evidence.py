@@ -20,13 +20,16 @@ three by 0.08 and more, and there it is right.
 
 from __future__ import annotations
 
+import ctypes
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import lapack
-from scipy.optimize import minimize_scalar
 
+from condyle.solver.backends import backend
+from condyle.solver.compiled_kernel import address, aligned
+from condyle.solver.kernel_source import LANE
 from condyle.solver.process_prior import difference_weights
 
 FloatArray = NDArray[np.float64]
@@ -158,19 +161,57 @@ class _Piece:
     order: int
     squares: FloatArray
 
-    def at(self, log_ratio: float) -> tuple[float, float]:
+    def at(self, log_ratios: FloatArray) -> tuple[FloatArray, FloatArray]:
         """RSS and log det A - (N - p) log r; infinite where rounding spoils A."""
-        band = np.exp(log_ratio) * self.squares
-        band[0] += self.precision
-        rhs = self.precision * self.y
-        factor, solution, info = lapack.dpbsv(band, rhs[:, None], lower=1, overwrite_ab=1)
-        if info != 0:
-            return np.inf, np.inf
-        x = solution[:, 0]
-        rss = float(self.precision @ (self.y - x) ** 2)
-        rss += float(np.exp(log_ratio) * (np.diff(x, self.order) ** 2).sum())
-        determinant = 2 * float(np.log(factor[0]).sum()) - (len(self.y) - self.order) * log_ratio
-        return rss, determinant
+        rss, determinant = smoothed_at(
+            self.y, self.precision, self.squares, self.order, np.exp(log_ratios)
+        )
+        return rss, determinant - (len(self.y) - self.order) * log_ratios
+
+
+def smoothed_at(
+    y: FloatArray, precision: FloatArray, squares: FloatArray, order: int, ratios: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """RSS and log det A of a series without holes, for some r; infinite where rounding spoils A.
+
+    Many at once are left to the compiled kernel. One goes to LAPACK whether there is a kernel or not: where r
+    is large RSS has six digits, and the last of them would move the estimate from backend to backend.
+
+    Parameters
+    ----------
+    y, precision : (frames,)
+    squares : (order + 1, frames), Fortran order
+        The lower band of D'D.
+    """
+    library = backend().library
+    if library is None or len(ratios) == 1:
+        found = [_smoothed_by_lapack(y, precision, squares, order, ratio) for ratio in ratios]
+        return np.array([rss for rss, _ in found]), np.array([det for _, det in found])
+    rss, determinant = np.empty(len(ratios)), np.empty(len(ratios))
+    work = aligned(((order + 2) * len(y), LANE))
+    given = [y, precision, squares.T, difference_weights(order), ratios]
+    told = [np.ascontiguousarray(x, dtype=np.float64) for x in given]
+    if not y.shape == precision.shape == squares.shape[1:] or len(squares) != order + 1:
+        raise ValueError("a series and its precision differ in length")
+    library.smooth_series(
+        *(ctypes.c_long(x) for x in (len(y), order, len(ratios))),
+        *(address(x) for x in (*told, work, rss, determinant)),
+    )
+    return rss, determinant
+
+
+def _smoothed_by_lapack(
+    y: FloatArray, precision: FloatArray, squares: FloatArray, order: int, ratio: float
+) -> tuple[float, float]:
+    band = ratio * squares
+    band[0] += precision
+    rhs = precision * y
+    factor, solution, info = lapack.dpbsv(band, rhs[:, None], lower=1, overwrite_ab=1)
+    if info != 0:
+        return np.inf, np.inf
+    x = solution[:, 0]
+    rss = float(precision @ (y - x) ** 2) + float(ratio * (np.diff(x, order) ** 2).sum())
+    return rss, 2 * float(np.log(factor[0]).sum())
 
 
 class _Series:
@@ -193,29 +234,37 @@ class _Series:
             self._constant -= _log_determinant(order, frames)
         self._constant += self._free * np.log(2 * np.pi)
 
-    def _at(self, log_ratio: float) -> tuple[float, float]:
+    def _at(self, log_ratios: FloatArray) -> tuple[FloatArray, FloatArray]:
         """RSS and log det A - (N - p) log r, precisions in units of their median."""
-        rss, determinant = np.sum([piece.at(log_ratio) for piece in self._pieces], axis=0)
-        return max(float(rss), np.finfo(float).tiny), float(determinant)
+        rss, determinant = np.sum([piece.at(log_ratios) for piece in self._pieces], axis=0)
+        return np.maximum(rss, np.finfo(float).tiny), determinant
 
     def best(self, least_kappa: float) -> tuple[float, float, float, bool]:
         """Give r, kappa and the log likelihood at the maximum, and whether anything moves."""
+        # Heavy, and only of use where a trial is smoothed.
+        from scipy.optimize import minimize_scalar
+
         low = -2 * self._order * np.log(2 * np.sin(np.pi * MOST_CUTOFF))
         high = np.log(MOST_RATIO)
         floor = least_kappa**2 / self._scale
 
-        def twice_minus(log_ratio: float) -> float:
-            rss, determinant = self._at(log_ratio)
-            noise = max(rss / self._free, floor)
-            return float(self._free * np.log(noise) + rss / noise + determinant + self._constant)
+        def twice_minus(log_ratios: FloatArray) -> FloatArray:
+            rss, determinant = self._at(log_ratios)
+            noise = np.maximum(rss / self._free, floor)
+            return np.asarray(
+                self._free * np.log(noise) + rss / noise + determinant + self._constant
+            )
 
         coarse = np.linspace(low, high, COARSE_RATIOS)
-        at = int(np.argmin([twice_minus(x) for x in coarse]))
+        at = int(np.argmin(twice_minus(coarse)))
         around = (coarse[max(at - 1, 0)], coarse[min(at + 1, len(coarse) - 1)])
         found = minimize_scalar(
-            twice_minus, bounds=around, method="bounded", options={"xatol": RATIO_TOLERANCE}
+            lambda x: float(twice_minus(np.array([x]))[0]),
+            bounds=around,
+            method="bounded",
+            options={"xatol": RATIO_TOLERANCE},
         )
-        noise = max(self._at(found.x)[0] / self._free, floor)
+        noise = max(float(self._at(np.array([found.x]))[0][0]) / self._free, floor)
         kappa = np.sqrt(noise * self._scale)
         moving = found.x < high - STILL
         return float(np.exp(found.x)) * self._scale, float(kappa), -float(found.fun) / 2, moving

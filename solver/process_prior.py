@@ -21,7 +21,7 @@ from math import comb
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.solver.posture import Posture, inverse_right_jacobian, rotations
+from condyle.solver.posture import Posture, inverse_right_jacobian, turn_between
 
 FloatArray = NDArray[np.float64]
 
@@ -83,18 +83,16 @@ class ProcessPrior:
         balls = posture.quaternions.shape[1]
         turns = np.zeros((order + 1, windows, balls, 3, 3))
         differences = np.zeros((windows, balls, 3))
+        frames = [posture.quaternions[i : i + windows] for i in range(order + 1)]
         middle = order // 2
-        for ball in range(balls):
-            frames = [
-                rotations(posture.quaternions[i : i + windows, ball]) for i in range(order + 1)
-            ]
-            for i, frame in enumerate(frames):
-                if i == middle:
-                    continue
-                away = (frames[middle].inv() * frame).as_rotvec()
-                differences[:, ball] += c[i] * away
-                turns[i, :, ball] = c[i] * inverse_right_jacobian(away)
-                turns[middle, :, ball] -= c[i] * inverse_right_jacobian(-away)
+        for i, frame in enumerate(frames if balls else []):
+            if i == middle:
+                continue
+            away = turn_between(frames[middle], frame)
+            differences += c[i] * away
+            turns[i] = c[i] * inverse_right_jacobian(away)
+            # Jr^-1(-a) is the transpose of Jr^-1(a).
+            turns[middle] -= np.swapaxes(turns[i], -1, -2)
         flat = differences.reshape(windows, -1)
         return np.concatenate([scalars, flat], axis=1), turns
 
@@ -119,6 +117,32 @@ class ProcessPrior:
             turned = np.einsum("nbij,nbi->nbj", turns[i], of_balls)
             force[i : i + windows, count:] -= turned.reshape(windows, -1)
         return force
+
+    def times(self, x: FloatArray, turns: FloatArray) -> FloatArray:
+        """J'J x (frames, freedoms), weighted."""
+        windows, balls = turns.shape[1:3]
+        count = x.shape[1] - 3 * balls
+        moved = np.zeros((windows, x.shape[1]))
+        for i, c in enumerate(difference_weights(self.order)):
+            part = x[i : i + windows]
+            moved[:, :count] += c * part[:, :count]
+            of_balls = part[:, count:].reshape(windows, balls, 3)
+            turned = np.einsum("nbij,nbj->nbi", turns[i], of_balls)
+            moved[:, count:] += turned.reshape(windows, -1)
+        return -self.force(moved, turns)
+
+    def diagonal(self, turns: FloatArray) -> FloatArray:
+        """(frames, freedoms) Of J'J, weighted."""
+        weights = self.weights()
+        windows, size = weights.shape
+        count = size - 3 * turns.shape[2]
+        found = np.zeros((windows + self.order, size))
+        of_balls = weights[:, count:].reshape(windows, -1, 3)
+        for i, c in enumerate(difference_weights(self.order)):
+            found[i : i + windows, :count] += c**2 * weights[:, :count]
+            turned = np.einsum("nbij,nbi->nbj", turns[i] ** 2, of_balls)
+            found[i : i + windows, count:] += turned.reshape(windows, -1)
+        return found
 
     def add_to_band(self, band: FloatArray, turns: FloatArray) -> None:
         """Add J'J to a lower band of (frames x freedoms) rows; see `block_banded`."""

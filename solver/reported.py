@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import casadi as ca
 import numpy as np
@@ -23,6 +24,7 @@ from condyle.model.skeleton import (
     Skeleton,
     Spherical,
 )
+from condyle.solver.covariances import Covariances
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.joint_angles import report_angles
 from condyle.solver.over_frames import over_frames
@@ -37,6 +39,19 @@ BoolArray = NDArray[np.bool_]
 
 NEAR_SINGULAR = np.radians(5.0)
 """Closer to the singularity of a reported sequence than this, its angles have no rate worth telling."""
+FRAMES_AT_ONCE = 512
+"""Whose whole matrices are in memory together."""
+
+
+@dataclass(frozen=True, slots=True)
+class Piece:
+    """Some columns with their values, and their derivatives (frames, columns, m) for m freedoms."""
+
+    columns: list[Column]
+    values: FloatArray
+    freedoms: IntArray
+    rates: FloatArray
+    of_ball: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,6 +65,7 @@ class Reported:
     at_limit : (frames, columns) bool
     involved : (frames, columns) bool
         Whether an undetermined freedom enters the number.
+    pieces : the columns, joint by joint, with their derivatives
     """
 
     columns: tuple[Column, ...]
@@ -57,17 +73,7 @@ class Reported:
     sd: FloatArray
     at_limit: BoolArray
     involved: BoolArray
-
-
-@dataclass(frozen=True, slots=True)
-class _Piece:
-    """Some columns with their values, and their derivatives (frames, columns, m) for m freedoms."""
-
-    columns: list[Column]
-    values: FloatArray
-    freedoms: IntArray
-    rates: FloatArray
-    of_ball: bool
+    pieces: tuple[Piece, ...]
 
 
 def report(kinematics: Kinematics, fits: FrameFits) -> Reported:
@@ -79,11 +85,16 @@ def report(kinematics: Kinematics, fits: FrameFits) -> Reported:
     sd = np.where(involved, np.nan, _sd(pieces, fits.covariance))
     ranged = np.array([column.has_range for column in columns], dtype=bool)
     at_limit = _touched(pieces, fits.at_limit) & ranged
-    return Reported(columns, values, sd, at_limit, involved)
+    return Reported(columns, values, sd, at_limit, involved, tuple(pieces))
+
+
+def involvement(kinematics: Kinematics, posture: Posture, freedoms: BoolArray) -> BoolArray:
+    """(frames, columns) Whether any of some freedoms (frames, freedoms) enters a number."""
+    return _touched(_pieces(kinematics, posture), freedoms)
 
 
 def report_derivatives(
-    kinematics: Kinematics, estimate: TrialEstimate, told: Reported, rate: float
+    estimate: TrialEstimate, told: Reported, rate: float
 ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
     """Rates and accelerations of everything reported, each with its sd.
 
@@ -93,8 +104,7 @@ def report_derivatives(
         Per second and second squared; NaN near a reported singularity, and where any of the five
         frames that tell them is undetermined.
     """
-    pieces = _pieces(kinematics, estimate.fits.posture)
-    steep = _side_by_side([_steepness(piece) for piece in pieces], len(told.values))
+    steep = _side_by_side([_steepness(piece) for piece in told.pieces], len(told.values))
     hidden = ~whole_windows(~told.involved) | (steep > 1 / np.sin(NEAR_SINGULAR))
     found = []
     first, second = derivatives(told.values, rate)
@@ -105,25 +115,22 @@ def report_derivatives(
         missing = hidden | np.isnan(values)
         found += [
             np.where(missing, np.nan, values),
-            np.where(missing, np.nan, _sd(pieces, covariance)),
+            np.where(missing, np.nan, _sd(told.pieces, covariance)),
         ]
     rates, rates_sd, accelerations, accelerations_sd = found
     return rates, rates_sd, accelerations, accelerations_sd
 
 
-def doubt_shares(
-    kinematics: Kinematics, posture: Posture, parts: Sequence[FloatArray | None]
-) -> dict[str, DoubtShares]:
+def doubt_shares(told: Reported, parts: Sequence[Covariances | None]) -> dict[str, DoubtShares]:
     """Median share of each part in the variance of each number that has one.
 
     Parameters
     ----------
-    parts : covariances (frames, freedoms, freedoms) of white noise, of what persists, of calibration
+    parts : covariances of white noise, of what persists, of calibration
         None: there is no such part.
     """
-    pieces = _pieces(kinematics, posture)
-    names = [column.name for piece in pieces for column in piece.columns]
-    variances = [None if part is None else _sd(pieces, part) ** 2 for part in parts]
+    names = [column.name for column in told.columns]
+    variances = [None if part is None else _sd(told.pieces, part) ** 2 for part in parts]
     whole = np.sum([v for v in variances if v is not None], axis=0)
     shares = np.full((len(parts), len(names)), np.nan)
     for i, variance in enumerate(variances):
@@ -132,12 +139,36 @@ def doubt_shares(
                 known = whole[:, j] > 0
                 if known.any():
                     shares[i, j] = np.median(variance[known, j] / whole[known, j])
-    told = np.isfinite(shares).any(axis=0)
+    has_one = np.isfinite(shares).any(axis=0)
     return {
         name: DoubtShares(*(float(share) for share in shares[:, j]))
         for j, name in enumerate(names)
-        if told[j]
+        if has_one[j]
     }
+
+
+def joint_covariance(told: Reported, covariance: Covariances) -> NDArray[np.float32]:
+    """(frames, columns, columns) J C J' of all numbers together; NaN where one is undetermined.
+
+    Parameters
+    ----------
+    covariance : Covariances
+        With every entry.
+    """
+    frames, count = told.values.shape
+    found = np.empty((frames, count, count), dtype=np.float32)
+    for start in range(0, frames, FRAMES_AT_ONCE):
+        rows = slice(start, min(start + FRAMES_AT_ONCE, frames))
+        J = np.zeros((rows.stop - start, count, covariance.pattern.size))
+        first = 0
+        for piece in told.pieces:
+            here = slice(first, first + len(piece.columns))
+            J[:, here, piece.freedoms] = piece.rates[rows]
+            first = here.stop
+        found[rows] = J @ np.asarray(covariance.take(rows)) @ np.swapaxes(J, 1, 2)
+    found[told.involved] = np.nan
+    np.swapaxes(found, 1, 2)[told.involved] = np.nan
+    return found
 
 
 def reported_values(
@@ -157,17 +188,17 @@ def _side_by_side(parts: list[FloatArray], frames: int) -> FloatArray:
     return np.concatenate([np.zeros((frames, 0)), *parts], axis=1)
 
 
-def _sd(pieces: list[_Piece], covariance: FloatArray) -> FloatArray:
+def _sd(pieces: Sequence[Piece], covariance: Covariances) -> FloatArray:
     """(frames, columns) Root of J C J'."""
     parts = []
     for piece in pieces:
-        block = covariance[:, piece.freedoms[:, None], piece.freedoms]
+        block = covariance.block(piece.freedoms)
         variance = np.einsum("nci,nij,ncj->nc", piece.rates, block, piece.rates, optimize=True)
         parts.append(np.sqrt(np.maximum(variance, 0.0)))
     return _side_by_side(parts, len(covariance))
 
 
-def _touched(pieces: list[_Piece], flags: BoolArray) -> BoolArray:
+def _touched(pieces: Sequence[Piece], flags: BoolArray) -> BoolArray:
     """(frames, columns) Whether a flagged freedom enters a number."""
     parts = [
         ((piece.rates != 0) & flags[:, None, piece.freedoms]).any(axis=2).astype(float)
@@ -176,26 +207,25 @@ def _touched(pieces: list[_Piece], flags: BoolArray) -> BoolArray:
     return _side_by_side(parts, len(flags)) > 0
 
 
-def _steepness(piece: _Piece) -> FloatArray:
+def _steepness(piece: Piece) -> FloatArray:
     """(frames, columns) How much a reported angle changes for a turn; 0 for plain coordinates."""
     if not piece.of_ball:
         return np.zeros(piece.values.shape)
     return np.asarray(np.linalg.norm(piece.rates, axis=2))
 
 
-def _pieces(kinematics: Kinematics, posture: Posture) -> list[_Piece]:
+def _pieces(kinematics: Kinematics, posture: Posture) -> list[Piece]:
     skeleton = kinematics.skeleton
-    values, rates = _coordinates(kinematics, posture)
+    told = _coordinates(kinematics, posture)
     position = {c.name: i for i, c in enumerate(skeleton.coordinates)}
     pieces = []
     for joint in skeleton.joints:
-        names = [name for name in _names(joint) if name in position]
-        if names:
-            rows = [position.pop(name) for name in names]
-            columns = [_column(skeleton, skeleton.coordinates[row], joint) for row in rows]
-            touched = np.flatnonzero((rates[:, rows] != 0).any(axis=(0, 1)))
-            own = rates[:, rows][:, :, touched]
-            pieces.append(_Piece(columns, values[:, rows], touched, own, of_ball=False))
+        for name in _names(joint):
+            if name in position:
+                row = position.pop(name)
+                column = _column(skeleton, skeleton.coordinates[row], joint)
+                values = told.values[:, row : row + 1]
+                pieces.append(Piece([column], values, *told.rates(row), of_ball=False))
         if isinstance(joint.motion, Floating | Spherical):
             pieces.append(_angles(kinematics, posture, joint, joint.motion.angles))
     return pieces
@@ -209,23 +239,35 @@ def _names(joint: Joint) -> list[str]:
     return []
 
 
-def _coordinates(kinematics: Kinematics, posture: Posture) -> tuple[FloatArray, FloatArray]:
-    """Values (frames, coordinates) and derivatives (frames, coordinates, scalars)."""
+@dataclass(frozen=True, slots=True)
+class _Coordinates:
+    """Values (frames, coordinates), and those derivatives (frames, entries) that can be other than zero."""
+
+    values: FloatArray
+    derivatives: FloatArray
+    row: IntArray
+    column: IntArray
+
+    def rates(self, row: int) -> tuple[IntArray, FloatArray]:
+        """Which scalars move a coordinate, and how (frames, 1, scalars)."""
+        entries = np.flatnonzero(self.row == row)
+        return self.column[entries], self.derivatives[:, None, entries]
+
+
+def _coordinates(kinematics: Kinematics, posture: Posture) -> _Coordinates:
     expression = kinematics.coordinate_values
-    jacobian = ca.densify(ca.jacobian(expression, kinematics.scalars))
-    count, scalars = expression.numel(), len(kinematics.freedoms.scalars)
-    frames = len(posture)
-    rates = np.zeros((frames, count, scalars))
-    if not count:
-        return np.zeros((frames, 0)), rates
-    function = ca.Function(
-        "coordinates", [kinematics.scalars], [ca.densify(expression), ca.vec(jacobian.T)]
-    )
-    values, flat = over_frames(function)(posture.scalars)
-    return values, flat.reshape(frames, count, scalars)
+    if not expression.numel():
+        none = np.zeros(0, dtype=np.int64)
+        return _Coordinates(np.zeros((len(posture), 0)), np.zeros((len(posture), 0)), none, none)
+    jacobian = ca.jacobian(expression, kinematics.scalars)
+    row, column = (np.array(part, dtype=np.int64) for part in jacobian.sparsity().get_triplet())
+    entries: Any = ca.vertcat(*jacobian.nonzeros())  # type: ignore[call-overload]
+    function = ca.Function("coordinates", [kinematics.scalars], [ca.densify(expression), entries])
+    values, derivatives = over_frames(function)(posture.scalars)
+    return _Coordinates(values, derivatives, row, column)
 
 
-def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: AngleReport) -> _Piece:
+def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: AngleReport) -> Piece:
     ball = kinematics.freedoms.balls.index(joint.name)
     rotation = rotations(posture.quaternions[:, ball]).as_matrix()
     found = report_angles(rotation, angles)
@@ -255,7 +297,7 @@ def _angles(kinematics: Kinematics, posture: Posture, joint: Joint, angles: Angl
         )
     )
     freedoms = np.arange(here.start, here.stop)
-    return _Piece(columns, found.values, freedoms, found.rates, of_ball=True)
+    return Piece(columns, found.values, freedoms, found.rates, of_ball=True)
 
 
 def _column(skeleton: Skeleton, coordinate: Coordinate, joint: Joint) -> Column:

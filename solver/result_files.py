@@ -6,35 +6,42 @@ files; each file appears whole or not at all, and together they replace an earli
 
 from __future__ import annotations
 
+import csv
 import json
 from collections.abc import Mapping
 from dataclasses import asdict
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
-import pandas as pd
 import pyarrow as pa
 import pyarrow.csv
+import pyarrow.parquet as pq
 from numpy.typing import NDArray
 
 from condyle.model.errors import CondyleError
 from condyle.model.meshes import GrownShape
 from condyle.model.skeleton import Shape, Skeleton, Turn, Vector
 from condyle.model.whole_files import whole_folder
+from condyle.solver.fit_report import fit_report
 from condyle.solver.posture import rotations
 from condyle.solver.quality import Finding
-from condyle.solver.results import FittedMotion, TrialFit
-
-FloatArray = NDArray[np.float64]
-from condyle.solver.fit_report import fit_report
 from condyle.solver.result_tables import (
+    Table,
+    arrow,
     column_meanings,
     coordinate_table,
+    covariance_arrays,
     marker_table,
     segment_table,
     summary_table,
 )
+from condyle.solver.results import FittedMotion, TrialFit
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+FloatArray = NDArray[np.float64]
 
 
 def save_trial(
@@ -58,31 +65,58 @@ def save_trial(
         Where the folder cannot be written.
     """
     coordinates = coordinate_table(fit)
-    numeric = coordinates.astype(
-        {c: np.int8 for c in coordinates.columns if str(c).endswith(".at_limit")}
-    )
+    numeric = {
+        name: values.astype(np.int8) if values.dtype == bool else values
+        for name, values in coordinates.items()
+    }
     with whole_folder(folder) as beside:
-        coordinates.to_parquet(beside / "coordinates.parquet", index=False)
-        _write_csv(numeric, beside / "coordinates.csv")
-        _write_csv(column_meanings(fit), beside / "columns.csv")
-        marker_table(fit).to_parquet(beside / "markers.parquet", index=False)
-        segments = segment_table(fit.motion, fit.derivatives)
-        segments.to_parquet(beside / "segments.parquet", index=False)
-        _write_csv(summary_table(fit), beside / "summary.csv")
+        _write_parquet(coordinates, beside / "coordinates.parquet")
+        _write_numbers(numeric, beside / "coordinates.csv")
+        _write_texts(column_meanings(fit), beside / "columns.csv")
+        _write_parquet(marker_table(fit), beside / "markers.parquet")
+        _write_parquet(segment_table(fit.motion, fit.derivatives), beside / "segments.parquet")
+        _write_texts(summary_table(fit), beside / "summary.csv")
+        if fit.covariance is not None:
+            np.savez(beside / "covariance.npz", **covariance_arrays(fit))  # type: ignore[arg-type]
         _write_json(skeleton_geometry(fit.motion, skeleton), beside / "skeleton.json")
         _write_json(fit_report(fit, skeleton, findings, origin), beside / "fit.json")
 
 
-def _write_csv(table: pd.DataFrame, path: Path) -> None:
-    """Nine significant digits; missing is empty. Tables of numbers alone go the quick way."""
-    if not all(kind.kind in "fiu" for kind in table.dtypes):
-        table.to_csv(path, index=False, float_format="%.9g")
-        return
-    columns = [pa.array(_nine_digits(table[name].to_numpy()), from_pandas=True) for name in table]
+def _write_parquet(table: Table, path: Path) -> None:
+    """Missing is null. Only text is worth a dictionary."""
+    made = _arrow_table(table)
+    texts = [field.name for field in made.schema if pa.types.is_string(field.type)]
+    pq.write_table(made, path, use_dictionary=texts)
+
+
+def _write_numbers(table: Table, path: Path) -> None:
+    """A table of numbers as CSV: nine significant digits; missing is empty."""
+    made = _arrow_table({name: _nine_digits(values) for name, values in table.items()})
     with path.open("wb") as stream:
-        stream.write((",".join(map(str, table.columns)) + "\n").encode())
-        written = pa.table(dict(zip(map(str, table.columns), columns, strict=True)))
-        pyarrow.csv.write_csv(written, stream, pyarrow.csv.WriteOptions(include_header=False))
+        stream.write((",".join(table) + "\n").encode())
+        pyarrow.csv.write_csv(made, stream, pyarrow.csv.WriteOptions(include_header=False))
+
+
+def _arrow_table(table: Table) -> pa.Table:
+    columns = [
+        arrow(values) if isinstance(values, np.ndarray) else values for values in table.values()
+    ]
+    return pa.Table.from_arrays(columns, names=list(table))
+
+
+def _write_texts(table: Table, path: Path) -> None:
+    """A short table with words in it as CSV."""
+    with path.open("w", encoding="utf-8", newline="") as stream:
+        writer = csv.writer(stream, lineterminator="\n")
+        writer.writerow(table)
+        for row in zip(*table.values(), strict=True):
+            writer.writerow([_in_nine_digits(value) for value in row])
+
+
+def _in_nine_digits(value: Any) -> Any:
+    if not isinstance(value, float):
+        return value
+    return "" if np.isnan(value) else f"{value:.9g}"
 
 
 def _nine_digits(values: NDArray[Any]) -> NDArray[Any]:
@@ -141,6 +175,9 @@ def load_motion(folder: Path) -> FittedMotion:
     CondyleError
         If the folder holds no solved trial, or a damaged one.
     """
+    # Heavy, and only of use in reading back.
+    import pandas as pd
+
     try:
         geometry = json.loads((folder / "skeleton.json").read_text(encoding="utf-8"))
         markers = pd.read_parquet(folder / "markers.parquet")

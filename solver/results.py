@@ -196,6 +196,8 @@ class TrialFit:
         Only numbers that have an sd.
     calibration_how : str
         What the part of calibration rests on.
+    covariance : (frames, columns, columns) float32, or None
+        Of the numbers of each frame together; NaN where undetermined. Only where it was asked for.
     """
 
     motion: FittedMotion
@@ -219,6 +221,7 @@ class TrialFit:
     smoothing: Smoothing | None = None
     doubts: Mapping[str, DoubtShares] = field(default_factory=dict)
     calibration_how: str = ""
+    covariance: NDArray[np.float32] | None = None
 
     def __post_init__(self) -> None:
         frames = len(self.motion.time)
@@ -257,6 +260,44 @@ class PlacedMarker:
 
 
 @dataclass(frozen=True, slots=True)
+class KnownBetter:
+    """One number of a person: what was expected of it, and what is known now.
+
+    Attributes
+    ----------
+    name : str
+    unit : "m", "rad" or "" (ln of a factor)
+    before, after : float
+        sd of what the model expects, and of the estimate.
+    """
+
+    name: str
+    unit: str
+    before: float
+    after: float
+
+
+@dataclass(frozen=True, slots=True)
+class MovementUsed:
+    """What a calibration took from trials of movement.
+
+    Attributes
+    ----------
+    trials : names
+    frames, of_all : how many frames were used, of how many
+    errors : marker -> m
+        RMS distance that neither skeleton nor skin explains.
+    left_out : marker -> frames in which it was too far off to be believed
+    """
+
+    trials: tuple[str, ...]
+    frames: int
+    of_all: int
+    errors: Mapping[str, float]
+    left_out: Mapping[str, int]
+
+
+@dataclass(frozen=True, slots=True)
 class Calibration:
     """A skeleton sized to one person, and what that rests on.
 
@@ -280,7 +321,10 @@ class Calibration:
     own_posture : Posture
         One frame: the static's.
     covariance : SubjectCovariance
-        Of sizes and marker places together.
+        Of sizes, marker places and freed joints together.
+    known_better : KnownBetters
+    movement : MovementUsed or None
+        None where only a static served.
     """
 
     skeleton: Skeleton
@@ -298,3 +342,5 @@ class Calibration:
     converged: bool
     own_posture: Posture
     covariance: SubjectCovariance
+    known_better: tuple[KnownBetter, ...] = ()
+    movement: MovementUsed | None = None

@@ -1,4 +1,4 @@
-"""What calibration does not know about a person, as one covariance: sizes and marker places together.
+"""What calibration does not know about a person, as one covariance: sizes, marker places, freed joints.
 
 They are strongly correlated, and that is the point: a static in which the knee is bent by an unknown
 few degrees turns all marker places of the shank together, and every knee angle after it. The file
@@ -16,7 +16,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.errors import CondyleError
-from condyle.model.skeleton import Skeleton
+from condyle.model.skeleton import Joint, Skeleton
 from condyle.model.whole_files import whole_file
 
 FloatArray = NDArray[np.float64]
@@ -35,7 +35,8 @@ class SubjectCovariance:
     ----------
     names : (entries,)
         ``size thigh_right y`` (ln of the factor; one for each size group, by its first member) and
-        ``placed ASIS_right x`` (m).
+        ``placed ASIS_right x`` (m); for joints that calibration found, ``centre hip_right x`` (m) and
+        ``axes knee_right x`` (rad).
     values : (entries,) factors and m, as calibration found them
     matrix : (entries, entries)
     how : str
@@ -49,19 +50,34 @@ class SubjectCovariance:
 
 
 def entry_names(skeleton: Skeleton) -> tuple[str, ...]:
-    """Names of the entries of a skeleton: its size groups, then the places of all its markers."""
+    """Names of the entries of a skeleton: its size groups, its markers' places, its freed joints."""
     sizes = [f"size {g.members[0][0]} {'xyz'[g.members[0][1]]}" for g in skeleton.sizing.groups]
-    return (*sizes, *(f"placed {m.name} {axis}" for m in skeleton.markers for axis in "xyz"))
+    placed = [f"placed {m.name} {axis}" for m in skeleton.markers for axis in "xyz"]
+    centres = [f"centre {j.name} {axis}" for j in placed_joints(skeleton) for axis in "xyz"]
+    turns = [f"axes {j.name} {axis}" for j in turned_joints(skeleton) for axis in "xyz"]
+    return (*sizes, *placed, *centres, *turns)
+
+
+def placed_joints(skeleton: Skeleton) -> list[Joint]:
+    """The joints whose centre calibration found."""
+    return [joint for joint in skeleton.joints if joint.placed is not None]
+
+
+def turned_joints(skeleton: Skeleton) -> list[Joint]:
+    """The joints whose axes calibration turned."""
+    return [joint for joint in skeleton.joints if joint.axis_turn is not None]
 
 
 def entry_values(skeleton: Skeleton) -> FloatArray:
-    """(entries,) Factors and places (m) as the skeleton has them; NaN where it has none."""
+    """(entries,) Factors, places (m) and turns (rad) as the skeleton has them; NaN where it has none."""
     sizes = []
     for group in skeleton.sizing.groups:
         segment, axis = group.members[0]
         size = skeleton.sizes.get(segment)
         sizes.append(np.nan if size is None else size.factors[axis])
     places = [m.placed or (np.nan,) * 3 for m in skeleton.markers]
+    places += [joint.placed or (np.nan,) * 3 for joint in placed_joints(skeleton)]
+    places += [joint.axis_turn or (np.nan,) * 3 for joint in turned_joints(skeleton)]
     return np.concatenate([sizes, np.ravel(places)]).astype(np.float64)
 
 
@@ -76,6 +92,10 @@ def independent(skeleton: Skeleton) -> SubjectCovariance:
         variance.append(ratio**2)
     for marker in skeleton.markers:
         variance += [sd**2 for sd in marker.placed_sd or (0.0,) * 3]
+    for joint in placed_joints(skeleton):
+        variance += [sd**2 for sd in joint.placed_sd or (0.0,) * 3]
+    for joint in turned_joints(skeleton):
+        variance += [sd**2 for sd in joint.axis_turn_sd or (0.0,) * 3]
     return SubjectCovariance(
         entry_names(skeleton),
         entry_values(skeleton),

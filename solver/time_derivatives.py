@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
-from condyle.solver.posture import rotations
+from condyle.solver.posture import quaternions_of, turn_between
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -85,18 +85,15 @@ def segment_velocities(
         return linear, np.full((frames, segments, 3), np.nan)
     window = first_frames(frames)[:, None] + np.arange(POINTS)
     first, _ = formulas(frames, rate)
-    R = laboratory_from_segment[..., :3, :3]
+    flat = laboratory_from_segment[..., :3, :3].reshape(-1, 3, 3)
+    inverse = quaternions_of(Rotation.from_matrix(flat)) * [1.0, -1.0, -1.0, -1.0]
+    inverse = inverse.reshape(frames, segments, 4)
     angular = np.zeros((frames, segments, 3))
     for w in range(POINTS):
         # R_later R_here' = Exp(turn), in laboratory axes.
-        turn = R[window[:, w]] @ np.swapaxes(R, -1, -2)
-        vector = _vectors(turn.reshape(-1, 3, 3)).reshape(frames, segments, 3)
-        angular += first[:, w, None, None] * vector
+        turn = turn_between(inverse[window[:, w]], inverse)
+        angular += first[:, w, None, None] * turn
     return linear, angular
-
-
-def _vectors(R: FloatArray) -> FloatArray:
-    return np.asarray(Rotation.from_matrix(R).as_rotvec())
 
 
 def ball_series(quaternions: FloatArray) -> FloatArray:
@@ -104,6 +101,5 @@ def ball_series(quaternions: FloatArray) -> FloatArray:
 
     An error of one frame enters and leaves again, so the series has the noise of the frames.
     """
-    turns = rotations(quaternions)
-    steps = (turns[:-1].inv() * turns[1:]).as_rotvec()
+    steps = turn_between(quaternions[:-1], quaternions[1:])
     return np.concatenate([np.zeros((1, 3)), np.cumsum(steps, axis=0)])

@@ -9,63 +9,59 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.solver.block_banded import FRAMES_A_BLOCK, factored, selected_inverse, without
+from condyle.solver.covariances import Covariances
+from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.posture import Posture
-from condyle.solver.time_derivatives import (
-    POINTS,
-    derivatives,
-    first_frames,
-    formulas,
-    whole_windows,
-)
+from condyle.solver.time_derivatives import derivatives, first_frames, formulas, whole_windows
 from condyle.solver.trial_plan import TrialPlan, freedom_series
-from condyle.solver.trial_smoother import system_band
+from condyle.solver.trial_system import Sums, TrialSystem
 
 FloatArray = NDArray[np.float64]
+
+FRAMES_AT_ONCE = 512
+"""Whose whole matrices are in memory together."""
 
 
 def white_covariances(
     plan: TrialPlan, posture: Posture, rate: float
-) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Covariances (frames, freedoms, freedoms) from white noise alone.
+) -> tuple[Covariances, Covariances, Covariances]:
+    """Covariances from white noise alone, of the entries that are kept of the frames' own.
 
     Returns
     -------
     Of the freedoms, of their rates, and of their accelerations (per s and per s^2).
     """
-    frames, n = plan.bounds.pinned.shape
-    H = plan.problem.information(posture, np.arange(frames))
+    kept, pattern = plan.own_covariance.pattern, plan.problem.functions.normal_equations.pattern
     _, turns = plan.prior.residuals(posture)
-    band = system_band(H, plan.prior, turns)
-    factor = factored(without(band, plan.bounds.pinned.ravel(), band), in_place=True)
-    if factor is None:
-        raise np.linalg.LinAlgError("a trial's information is not positive definite")
-    white, rates, accelerations = (np.zeros((frames, n, n)) for _ in range(3))
-    begin = first_frames(frames)
-    formula = formulas(frames, rate)
-    scale = np.outer(plan.evidence.kappa, plan.evidence.kappa)
-    for first, joint in selected_inverse(factor, n):
-        count = len(joint) // n
-        blocks = joint.reshape(count, n, count, n)
-        own = range(first, min(first + FRAMES_A_BLOCK, frames))
-        for k in own:
-            white[k] = blocks[k - first, :, k - first] * scale
-        rows = np.flatnonzero((begin >= first) & (begin < first + FRAMES_A_BLOCK))
-        for result, weights in zip((rates, accelerations), formula, strict=True):
-            window = np.zeros((len(rows), count))
-            for w in range(POINTS):
-                window[np.arange(len(rows)), begin[rows] + w - first] = weights[rows, w]
-            half = np.einsum("ra,aibj->ribj", window, blocks)
-            result[rows] = np.einsum("rb,ribj->rij", window, half) * scale
+    system = TrialSystem(pattern, _information(plan.problem, posture), plan.prior, turns)
+    rows, columns = kept.pairs.T
+    found = system.covariances(
+        plan.bounds.pinned,
+        kept.pairs,
+        plan.evidence.kappa[rows] * plan.evidence.kappa[columns],
+        Sums(first_frames(len(posture)), np.stack(formulas(len(posture), rate))),
+    )
     free = ~plan.bounds.pinned
     moving = whole_windows(free)
-    for result, told in ((white, free), (rates, moving), (accelerations, moving)):
-        result *= told[:, :, None] & told[:, None, :]
+    white, rates, accelerations = (
+        Covariances(kept, values).only(told)
+        for values, told in zip(found, (free, moving, moving), strict=True)
+    )
     return white, rates, accelerations
 
 
-def lasting_covariance(plan: TrialPlan, part: slice) -> FloatArray:
-    """(frames, freedoms, freedoms) The persisting part in some frames; across a gap, that of its edges.
+def _information(problem: FrameProblem, posture: Posture) -> FloatArray:
+    """(frames, entries) J'WJ + prior, packed."""
+    pattern = problem.functions.normal_equations.pattern
+    parts = []
+    for start in range(0, len(problem), FRAMES_AT_ONCE):
+        rows = np.arange(start, min(start + FRAMES_AT_ONCE, len(problem)))
+        parts.append(pattern.packed(problem.information(posture.take(rows), rows)))
+    return np.concatenate(parts)
+
+
+def lasting_covariance(plan: TrialPlan, part: slice) -> Covariances:
+    """The persisting part in some frames; across a gap, that of its edges.
 
     Parameters
     ----------
@@ -75,16 +71,16 @@ def lasting_covariance(plan: TrialPlan, part: slice) -> FloatArray:
     # One share for all: the scatter of each freedom's own kappa would pass for persisting error.
     kappa = float(np.median(plan.evidence.kappa[plan.evidence.ratio > 0]))
     share = max(1 - kappa**2, 0.0)
-    lasting = plan.own_covariance[part] * share
+    lasting = plan.own_covariance.take(part).times(share)
     frames, known = np.arange(len(plan))[part], plan.own_known
     gaps = plan.estimated[part] & ~known[part]
+    lasting = lasting.only(~gaps)
+    diagonal = np.diag(lasting.pattern.position)
     for d in np.flatnonzero(gaps.any(axis=0)):
         gap = gaps[:, d]
-        lasting[gap, d, :] = 0.0
-        lasting[gap, :, d] = 0.0
         at = np.flatnonzero(known[:, d])
-        variance = share * plan.own_covariance[at, d, d]
-        lasting[gap, d, d] = np.interp(frames[gap], at, variance)
+        variance = share * plan.own_covariance.values[at, diagonal[d]]
+        lasting.values[gap, diagonal[d]] = np.interp(frames[gap], at, variance)
     return lasting
 
 

@@ -19,6 +19,7 @@ from numpy.typing import NDArray
 
 from condyle.solver.blas_threads import one_thread
 from condyle.solver.cone_limits import at_limit as ball_at_limit
+from condyle.solver.covariances import Covariances, joined
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Solution
@@ -33,7 +34,7 @@ BoolArray = NDArray[np.bool_]
 
 SETTLED = 1e-7
 """A projected gradient below which a frame is at its minimum, wherever the rest of the trial is."""
-WINDOW = 3000
+WINDOW = 8000
 """Frames of a window without its overlaps: bounds the memory of a long trial."""
 FORGOTTEN = 1e-7
 """Share of a disturbance that is left where windows meet."""
@@ -50,9 +51,9 @@ class TrialEstimate:
     evidence : Evidence
     rounds : int
         Newton steps, of the window that took most.
-    white : (frames, freedoms, freedoms)
+    white : Covariances
         The part of the covariance that smoothing makes smaller.
-    rate_covariance, acceleration_covariance : (frames, freedoms, freedoms)
+    rate_covariance, acceleration_covariance : Covariances
     quickness : (1/s, 1/s^2)
         How fast the trial goes beside how far: what an error that moves with it has as a rate.
     """
@@ -60,19 +61,19 @@ class TrialEstimate:
     fits: FrameFits
     evidence: Evidence
     rounds: int
-    white: FloatArray
-    rate_covariance: FloatArray
-    acceleration_covariance: FloatArray
+    white: Covariances
+    rate_covariance: Covariances
+    acceleration_covariance: Covariances
     quickness: tuple[float, float]
 
-    def with_doubt(self, covariance: FloatArray, varying: FloatArray) -> TrialEstimate:
-        """The estimate with more covariance (frames, freedoms, freedoms), a part of it moving along."""
+    def with_doubt(self, covariance: Covariances, varying: Covariances) -> TrialEstimate:
+        """The estimate with more covariance, a part of it moving along."""
         speed, bend = self.quickness
         return replace(
             self,
             fits=replace(self.fits, covariance=self.fits.covariance + covariance),
-            rate_covariance=self.rate_covariance + speed**2 * varying,
-            acceleration_covariance=self.acceleration_covariance + bend**2 * varying,
+            rate_covariance=self.rate_covariance + varying.times(speed**2),
+            acceleration_covariance=self.acceleration_covariance + varying.times(bend**2),
         )
 
 
@@ -107,16 +108,18 @@ def smooth_trial(
     for inner, outer in windows(len(plan), memory(plan), window):
         part = plan.window(outer)
         found = minimise_trial(part.problem, part.prior, part.start, part.bounds)
-        white, rates, accelerations = white_covariances(part, found.posture, rate)
-        lasting = lasting_covariance(plan, outer)
         kept = slice(inner.start - outer.start, inner.stop - outer.start)
+        white, rates, accelerations = (
+            covariance.take(kept) for covariance in white_covariances(part, found.posture, rate)
+        )
+        lasting = lasting_covariance(plan, inner)
         parts.append(
             _Part(
                 _told(part, found, white + lasting, kept),
                 found.rounds,
-                white[kept],
-                (rates + speed**2 * lasting)[kept],
-                (accelerations + bend**2 * lasting)[kept],
+                white,
+                rates + lasting.times(speed**2),
+                accelerations + lasting.times(bend**2),
             )
         )
         if watch is not None:
@@ -130,9 +133,9 @@ class _Part:
 
     fits: FrameFits
     rounds: int
-    white: FloatArray
-    rates: FloatArray
-    accelerations: FloatArray
+    white: Covariances
+    rates: Covariances
+    accelerations: Covariances
 
 
 def memory(plan: TrialPlan) -> int:
@@ -144,7 +147,7 @@ def memory(plan: TrialPlan) -> int:
     the precision of a frame; within a gap nothing is forgotten, unless by a pull.
     """
     order, ratio = plan.prior.order, plan.evidence.ratio
-    variance = np.einsum("nii->ni", plan.own_covariance)
+    variance = plan.own_covariance.variances()
     smoothed = np.flatnonzero(ratio > 0)
     typical = [np.median(v[v > 0]) for v in variance.T[smoothed]]
     across = 0.0
@@ -189,8 +192,10 @@ def windows(frames: int, overlap: int, window: int) -> list[tuple[slice, slice]]
     return found
 
 
-def _told(plan: TrialPlan, found: SmoothSolution, covariance: FloatArray, kept: slice) -> FrameFits:
-    """A window's own frames in the words of a frame-by-frame fit."""
+def _told(
+    plan: TrialPlan, found: SmoothSolution, covariance: Covariances, kept: slice
+) -> FrameFits:
+    """A window's own frames, with their covariances, in the words of a frame-by-frame fit."""
     bounds, frames = plan.bounds, len(plan)
     at_limit = (found.active != 0) & ~bounds.pinned
     count = bounds.lower.shape[1]
@@ -208,7 +213,7 @@ def _told(plan: TrialPlan, found: SmoothSolution, covariance: FloatArray, kept: 
         bounds.take(rows),
     )
     return FrameFits(
-        solution, found.optimality[kept], covariance[kept], plan.involved[kept], at_limit[kept]
+        solution, found.optimality[kept], covariance, plan.involved[kept], at_limit[kept]
     )
 
 
@@ -229,7 +234,7 @@ def _joined(plan: TrialPlan, parts: list[_Part], quick: tuple[float, float]) -> 
             plan.bounds,
         ),
         np.concatenate([fit.optimality for fit in fits]),
-        np.concatenate([fit.covariance for fit in fits]),
+        joined([fit.covariance for fit in fits]),
         np.concatenate([fit.involved for fit in fits]),
         np.concatenate([fit.at_limit for fit in fits]),
     )
@@ -237,8 +242,8 @@ def _joined(plan: TrialPlan, parts: list[_Part], quick: tuple[float, float]) -> 
         whole,
         plan.evidence,
         max(part.rounds for part in parts),
-        np.concatenate([part.white for part in parts]),
-        np.concatenate([part.rates for part in parts]),
-        np.concatenate([part.accelerations for part in parts]),
+        joined([part.white for part in parts]),
+        joined([part.rates for part in parts]),
+        joined([part.accelerations for part in parts]),
         quick,
     )

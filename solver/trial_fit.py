@@ -23,7 +23,8 @@ from condyle.model.skeleton import Skeleton
 from condyle.recording.recording import Recording, is_seen
 from condyle.solver.blas_threads import one_thread
 from condyle.solver.calibration_influence import CalibrationDoubt, calibration_doubt
-from condyle.solver.frame_fit import FrameFits, fit_frames
+from condyle.solver.covariances import Covariances, all_pairs
+from condyle.solver.frame_fit import FrameFits, fit_frames, whole_covariances
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.matching import (
     MatchedMarkers,
@@ -32,7 +33,14 @@ from condyle.solver.matching import (
     match_markers,
     root_alignment,
 )
-from condyle.solver.reported import Reported, doubt_shares, report, report_derivatives
+from condyle.solver.reported import (
+    Reported,
+    doubt_shares,
+    involvement,
+    joint_covariance,
+    report,
+    report_derivatives,
+)
 from condyle.solver.results import FittedMotion, Smoothing, TimeDerivatives, TrialFit
 from condyle.solver.robust_loss import Loss
 from condyle.solver.subject_covariance import SubjectCovariance
@@ -83,6 +91,7 @@ def fit_trial(
     start: float | None = None,
     end: float | None = None,
     smooth: bool = False,
+    covariance: bool = False,
     loss: Loss | None = None,
     subject: SubjectCovariance | None = None,
     functions: SkeletonFunctions | None = None,
@@ -101,6 +110,8 @@ def fit_trial(
         s, on the recording's own clock.
     smooth : bool
         Whether the trial is one estimate, with rates and accelerations; else each frame is by itself.
+    covariance : bool
+        Whether the covariance of all numbers of each frame is kept; it takes much memory.
     loss : Loss, optional
         In place of the sum of squares: see `robust_loss`.
     subject : SubjectCovariance, optional
@@ -124,38 +135,44 @@ def fit_trial(
         skeleton, functions, matched.positions, upright, variance=matched.variance
     ).with_loss(loss)
     _check_enough(problem, recording, skeleton)
-    fits = fit_frames(problem, watch=watch)
+    kept = all_pairs(functions.kinematics.freedoms.size) if covariance else None
+    fits = fit_frames(problem, kept=kept, watch=watch)
     estimate = smooth_trial(problem, fits, recording.rate) if smooth else None
     final = fits if estimate is None else estimate.fits
     doubt = None
     if subject is not None:
-        doubt = calibration_doubt(problem, final.posture, fits.covariance, subject)
+        doubt = calibration_doubt(
+            problem,
+            final.posture,
+            lambda rows: whole_covariances(problem, fits.solution, rows),
+            subject,
+            fits.covariance.pattern,
+        )
         if estimate is not None:
             estimate = estimate.with_doubt(doubt.covariance, doubt.varying)
         final = replace(final, covariance=final.covariance + doubt.covariance)
-    fit = _assembled(skeleton, recording, matched, upright, problem, final)
-    fit = _with_doubts(fit, problem, fits, estimate, doubt)
-    return fit if estimate is None else _with_motion(fit, problem, estimate, fits)
+    told = report(functions.kinematics, final)
+    fit = _assembled(skeleton, recording, matched, upright, problem, final, told)
+    if covariance:
+        fit = replace(fit, covariance=joint_covariance(told, final.covariance))
+    white = None if estimate is None else estimate.white
+    fit = _with_doubts(fit, told, final.covariance, white, doubt)
+    return fit if estimate is None else _with_motion(fit, told, problem, estimate, fits)
 
 
 def _with_doubts(
     fit: TrialFit,
-    problem: FrameProblem,
-    frames: FrameFits,
-    estimate: TrialEstimate | None,
+    told: Reported,
+    whole: Covariances,
+    white: Covariances | None,
     doubt: CalibrationDoubt | None,
 ) -> TrialFit:
     """The fit with which part of each variance comes from where."""
-    white = None if estimate is None else estimate.white
     calibration = None if doubt is None else doubt.covariance
-    persisting, posture = frames.covariance, frames.posture
-    if estimate is not None:
-        rest = estimate.fits.covariance - estimate.white
-        persisting, posture = (
-            (rest if doubt is None else rest - doubt.covariance),
-            estimate.fits.posture,
-        )
-    shares = doubt_shares(problem.functions.kinematics, posture, (white, persisting, calibration))
+    persisting = whole
+    for part in (white, calibration):
+        persisting = persisting if part is None else persisting - part
+    shares = doubt_shares(told, (white, persisting, calibration))
     how = "not known: no sizes or places of a calibration" if doubt is None else doubt.how
     return replace(fit, doubts=shares, calibration_how=how)
 
@@ -206,9 +223,9 @@ def _assembled(
     upright: Upright,
     problem: FrameProblem,
     fits: FrameFits,
+    told: Reported,
 ) -> TrialFit:
     functions = problem.functions
-    told = report(functions.kinematics, fits)
     fitted = functions.marker_positions(fits.posture, problem.numbers)
     placed = is_seen(sized_marker_at(skeleton))
     outlier = _outliers(problem, fits)
@@ -250,17 +267,22 @@ def _assembled(
 
 
 def _with_motion(
-    fit: TrialFit, problem: FrameProblem, estimate: TrialEstimate, frames: FrameFits
+    fit: TrialFit,
+    told: Reported,
+    problem: FrameProblem,
+    estimate: TrialEstimate,
+    frames: FrameFits,
 ) -> TrialFit:
     """The fit with what only a whole trial can tell: rates, accelerations, velocities, noise."""
-    kinematics = problem.functions.kinematics
-    told = report(kinematics, estimate.fits)
     linear, angular = segment_velocities(fit.motion.laboratory_from_segment, fit.rate)
     jumps = _at_jumps(problem, estimate.fits.involved)
     linear[jumps], angular[jumps] = np.nan, np.nan
-    derived = report_derivatives(kinematics, estimate, told, fit.rate)
+    derived = report_derivatives(estimate, told, fit.rate)
     names = [column.name for column in told.columns]
-    bridged = (report(kinematics, frames).involved & ~told.involved).sum(axis=0)
+    rows = np.flatnonzero(frames.involved.any(axis=1))
+    kinematics, alone = problem.functions.kinematics, frames.posture.take(rows)
+    unseen = involvement(kinematics, alone, frames.involved[rows])
+    bridged = (unseen & ~told.involved[rows]).sum(axis=0)
     placed = problem.weights.max(axis=0)
     sd = float(np.median(1 / np.sqrt(placed[placed > 0])))
     smoothed = estimate.evidence.ratio > 0

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from condyle.model.skeleton import Moves, Spherical
+from condyle.solver.covariances import Covariances
 from condyle.solver.frame_fit import FrameFits
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.gap_bridging import (
@@ -50,7 +51,7 @@ class TrialPlan:
         Where a freedom is told by its frame or by its neighbours.
     bounds : Bounds
     start : Posture
-    own_covariance : (frames, freedoms, freedoms)
+    own_covariance : Covariances
         Of the frames' own fits, the markers' whole sd counted.
     own_known : (frames, freedoms) bool
         Where markers or ties, and not a pull alone, say something in it.
@@ -64,7 +65,7 @@ class TrialPlan:
     estimated: BoolArray
     bounds: Bounds
     start: Posture
-    own_covariance: FloatArray
+    own_covariance: Covariances
     own_known: BoolArray
     involved: BoolArray
 
@@ -82,7 +83,7 @@ class TrialPlan:
             self.estimated[part],
             self.bounds.take(rows),
             self.start.take(rows),
-            self.own_covariance[part],
+            self.own_covariance.take(part),
             self.own_known[part],
             self.involved[part],
         )
@@ -166,7 +167,7 @@ def _evidence(
     determined: BoolArray,
 ) -> Evidence:
     """Weighed on freedoms where a frame determines them and no limit clips them."""
-    variance = np.einsum("nii->ni", fits.covariance)
+    variance = fits.covariance.variances()
     free = determined & ~fits.at_limit & (variance > 0)
     placed = problem.weights.max(axis=0)
     sd = 1 / np.sqrt(placed[placed > 0])
@@ -238,7 +239,7 @@ def _smooth_start(
     """
     posture, order = fits.posture, evidence.order
     scalars, quaternions = posture.scalars.copy(), posture.quaternions.copy()
-    variance = np.einsum("nii->ni", fits.covariance)
+    variance = fits.covariance.variances()
     weight = np.where(determined & (variance > 0), 1 / np.where(variance > 0, variance, 1.0), 0.0)
     for d in np.flatnonzero(evidence.ratio[: scalars.shape[1]] > 0):
         found = smoothed(scalars[:, d : d + 1], weight[:, d], evidence.ratio[d], order)[:, 0]

@@ -18,11 +18,14 @@ _HOMES = {
     "demo": "condyle.demonstration",
     "describe_recording": "condyle.pipeline",
     "export": "condyle.exporting",
+    "figures": "condyle.reporting",
     "joint_axis": "condyle.solver.joints_from_movement",
     "joint_centre": "condyle.solver.joints_from_movement",
     "load_skeleton": "condyle.model",
-    "picture": "condyle.pipeline",
+    "movie": "condyle.filming",
+    "picture": "condyle.picturing",
     "read_recording": "condyle.recording",
+    "report": "condyle.reporting",
     "solve": "condyle.pipeline",
 }
 
@@ -33,11 +36,14 @@ __all__ = [
     "demo",
     "describe_recording",
     "export",
+    "figures",
     "joint_axis",
     "joint_centre",
     "load_skeleton",
+    "movie",
     "picture",
     "read_recording",
+    "report",
     "solve",
 ]
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import asdict
-from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from condyle.checking import CoordinateReport, ModelReport
@@ -22,6 +21,9 @@ if TYPE_CHECKING:
     from condyle.demo_data import AngleErrors
     from condyle.demonstration import Demonstration
     from condyle.exporting import Exported
+    from condyle.filming import Movie
+    from condyle.picturing import Pictures
+    from condyle.solver.results import KnownBetter
 
 DONE, NEEDS_A_LOOK = 0, 1
 
@@ -146,6 +148,14 @@ def show_subject(made: SizedSubject, *, as_json: bool) -> int:
                     for name, value in found.posture.items()
                 },
                 "markers": [asdict(marker) for marker in found.markers],
+                "joints": {
+                    joint.name: {"placed": joint.placed, "placed_sd": joint.placed_sd}
+                    | {"axis_turn": joint.axis_turn, "axis_turn_sd": joint.axis_turn_sd}
+                    for joint in found.skeleton.joints
+                    if joint.placed or joint.axis_turn
+                },
+                "known_better": [asdict(number) for number in found.known_better],
+                "movement": None if found.movement is None else asdict(found.movement),
                 "markers_without_label": list(found.without_label),
                 "labels_not_in_model": list(found.other_labels),
                 "warnings": _findings(made.findings),
@@ -159,12 +169,19 @@ def show_subject(made: SizedSubject, *, as_json: bool) -> int:
         length = f"{1000 * lengths[name]:.0f} mm" if name in lengths else ""
         rows.append((name, length, *cells))
     show_table("", ["segment", "length", "factor x", "factor y", "factor z"], rows)
+    _show_known_better(found.known_better)
     start, end = found.still
     say(
         f"{len(found.markers)} markers placed from {start:.2f}-{end:.2f} s of {found.static}, "
         f"{1000 * rms:.1f} mm RMS from where the model expects them; up is {found.up} "
         f"({found.up_how})"
     )
+    if found.movement is not None:
+        used = found.movement
+        say(
+            f"{used.frames} of {used.of_all} frames of {', '.join(used.trials)} told joints and places; markers "
+            f"are placed where they sit on average there"
+        )
     if found.without_label:
         say(f"markers of the model without a label here: {', '.join(found.without_label)}")
     if found.other_labels:
@@ -172,6 +189,20 @@ def show_subject(made: SizedSubject, *, as_json: bool) -> int:
     show_findings(made.findings)
     say(f"{found.skeleton.name} sized -> {made.output}")
     return status_of(made.findings)
+
+
+def _show_known_better(numbers: Sequence[KnownBetter]) -> None:
+    """What was expected of the person's numbers and what is known now, the best known first."""
+    rows = []
+    for number in sorted(numbers, key=lambda n: n.after / n.before):
+        times, unit = {"m": (1000, "mm"), "rad": (math.degrees(1), "deg"), "": (100, "%")}[
+            number.unit
+        ]
+        before, after = (f"{times * sd:.1f} {unit}" for sd in (number.before, number.after))
+        share = f"{100 * (number.after / number.before) ** 2:.0f} %"
+        rows.append((number.name, before, after, share))
+    title = "what recordings told: sd as the model expects, and now"
+    show_table(title, ["number", "expected", "known", "left to the model"], rows)
 
 
 def show_solved(run: Callable[[Watch], list[SolvedTrial]], *, as_json: bool) -> int:
@@ -214,13 +245,30 @@ def trial_line(trial: SolvedTrial) -> str:
     )
 
 
-def show_pictures(pictures: Sequence[Path], *, as_json: bool) -> int:
-    """The pictures written."""
+def show_pictures(pictures: Pictures, *, as_json: bool) -> int:
+    """The pictures written, and what is worth saying about them."""
     if as_json:
-        show_json({"pictures": [str(path) for path in pictures]})
-    else:
-        for path in pictures:
-            say(str(path))
+        show_json({"pictures": [str(path) for path in pictures.files], "notes": pictures.notes})
+        return DONE
+    for note in pictures.notes:
+        say(f"note: {note}")
+    for path in pictures.files:
+        say(str(path))
+    return DONE
+
+
+def show_movies(run: Callable[[Watch], list[Movie]], *, as_json: bool) -> int:
+    """Film with a progress bar, then one line a film."""
+    with progress("filming") as watch:
+        films = run(watch)
+    if as_json:
+        show_json({"movies": [asdict(film) for film in films]})
+        return DONE
+    for film in films:
+        for note in film.notes:
+            say(f"note: {note}")
+        for file in film.files:
+            say(f"{film.pictures} pictures, {film.seconds:.1f} s -> {file}")
     return DONE
 
 
@@ -238,7 +286,8 @@ def show_demo(run: Callable[[Watch], Demonstration], *, as_json: bool) -> int:
                     name: [asdict(error) for error in errors]
                     for name, errors in made.angles.items()
                 },
-                "pictures": [str(path) for path in made.pictures],
+                "pictures": [str(path) for path in made.pictures.files],
+                "page": str(made.report.to_open),
             }
         )
         return DONE
@@ -261,9 +310,9 @@ def show_demo(run: Callable[[Watch], Demonstration], *, as_json: bool) -> int:
         "offset is small or large, not that the sd is wrong. Knees that turn about an axis of their own, as "
         "this person's do, are outside what any sd here knows."
     )
-    for path in made.pictures:
-        say(str(path))
+    show_pictures(made.pictures, as_json=False)
     say(CAUTION)
+    say(f"open {made.report.to_open} in a browser")
     return DONE
 
 

@@ -46,6 +46,25 @@ Units = Annotated[
 From = Annotated[float | None, typer.Option("--from", help="Seconds, on the recording's clock.")]
 To = Annotated[float | None, typer.Option("--to", help="Seconds, on the recording's clock.")]
 
+View = Annotated[
+    str, typer.Option("--view", help="front, side, top, oblique, or a camera's YAML file.")
+]
+Size = Annotated[str | None, typer.Option("--size", help="Pixels, such as 1280x960.")]
+Exaggerate = Annotated[
+    float, typer.Option("--exaggerate", help="How many times longer residuals are drawn.")
+]
+Theme = Annotated[str, typer.Option("--theme", help="light or dark.")]
+
+
+def pixels(size: str | None) -> tuple[int, int] | None:
+    """A size written as WIDTHxHEIGHT."""
+    if size is None:
+        return None
+    width, _, height = size.lower().partition("x")
+    if not (width.isdecimal() and height.isdecimal()):
+        raise CondyleError(f"--size {size}: this is no size.\n  Write it as 1280x960, in pixels.")
+    return int(width), int(height)
+
 
 def guarded(command: Callable[..., int | None]) -> Callable[..., None]:
     """Turn what a command returns or raises into an exit status and one honest line."""
@@ -135,9 +154,29 @@ def recording(
 def calibrate(
     model: Annotated[str, typer.Argument(help="A shipped model's name, or a file.")],
     static: Annotated[Path, typer.Argument(help="The static trial: the person stands still.")],
+    moving: Annotated[
+        list[Path] | None,
+        typer.Argument(help="Trials in which the same person moves: joint centres and axes."),
+    ] = None,
+    *,
     output: Annotated[Path, typer.Option("--output", "-o", help="The subject file to write.")],
     mass: Annotated[float | None, typer.Option("--mass", help="Of the person, kg.")] = None,
     stature: Annotated[float | None, typer.Option("--stature", help="Of the person, m.")] = None,
+    lengths: Annotated[
+        Path | None,
+        typer.Option("--lengths", help="YAML of tape-measured lengths: {thigh_right: 0.43}."),
+    ] = None,
+    marker_diameter: Annotated[
+        float | None,
+        typer.Option("--marker-diameter", help="Of the markers, m; 0.014 if not said."),
+    ] = None,
+    body_table: Annotated[
+        str | None,
+        typer.Option(
+            "--body-table",
+            help="Masses by de_leva_female, de_leva_male, dumas_female or dumas_male.",
+        ),
+    ] = None,
     labels: Labels = None,
     units: Units = None,
     start: From = None,
@@ -145,7 +184,7 @@ def calibrate(
     up: Up = None,
     json: Json = False,
 ) -> int:
-    """Size a MODEL and place its markers on the person of a STATIC trial; write SUBJECT.yaml."""
+    """Size a MODEL and place its markers on the person of a STATIC and MOVING trials; write SUBJECT.yaml."""
     from condyle.answers import show_subject
     from condyle.pipeline import calibrate as run
 
@@ -153,8 +192,12 @@ def calibrate(
         model,
         static,
         output,
+        moving=moving or (),
         mass=mass,
         stature=stature,
+        lengths=lengths,
+        marker_diameter=marker_diameter,
+        body_table=body_table,
         labels=labels,
         units=units,
         up=up,
@@ -179,6 +222,10 @@ def solve(
         bool,
         typer.Option("--no-smooth", help="Each frame by itself, without rates."),
     ] = False,
+    covariance: Annotated[
+        bool,
+        typer.Option("--covariance", help="Write covariance.npz too: all numbers of each frame."),
+    ] = False,
     loss: Annotated[
         str,
         typer.Option("--loss", help="squares; huber or geman_mcclure if some markers are wrong."),
@@ -195,6 +242,7 @@ def solve(
             trials,
             output,
             smooth=not no_smooth,
+            covariance=covariance,
             loss=loss,
             labels=labels,
             units=units,
@@ -207,22 +255,152 @@ def solve(
     )
 
 
-@app.command(epilog="Example: condyle picture results/walk --frame 120")
+@app.command(epilog="Example: condyle picture results/walk --time 1.2 --view side")
 @guarded
 def picture(
     directory: Annotated[Path, typer.Argument(help="What condyle solve wrote.")],
     frame: Annotated[
-        int | None,
-        typer.Option("--frame", help="The recording's frame number; else the worst one."),
+        int | None, typer.Option("--frame", help="Draw this frame, by the recording's own number.")
     ] = None,
-    view: Annotated[str, typer.Option("--view", help="oblique, front or side.")] = "oblique",
+    time: Annotated[
+        float | None, typer.Option("--time", help="Draw the frame nearest this time, seconds.")
+    ] = None,
+    view: View = "oblique",
+    size: Size = None,
+    width_mm: Annotated[
+        float | None, typer.Option("--width-mm", help="For print: the width; 85 is one column.")
+    ] = None,
+    dpi: Annotated[float, typer.Option("--dpi", help="For print: pixels per inch.")] = 300.0,
+    exaggerate: Exaggerate = 3.0,
+    theme: Theme = "light",
+    transparent: Annotated[
+        bool, typer.Option("--transparent", help="Without the ground, for a slide.")
+    ] = False,
+    ghost: Annotated[
+        list[Path] | None,
+        typer.Option("--ghost", help="Another solved trial, drawn pale beside it; repeatable."),
+    ] = None,
+    together: Annotated[
+        bool, typer.Option("--together", help="Move ghosts onto the person's place and heading.")
+    ] = False,
+    axes: Annotated[bool, typer.Option("--axes", help="Draw the joint axes.")] = False,
+    ellipsoids: Annotated[
+        bool, typer.Option("--ellipsoids", help="Draw how well each place is known (95 %).")
+    ] = False,
+    subject: Annotated[
+        Path | None,
+        typer.Option("--subject", help="For axes and ellipsoids: the subject, if it has moved."),
+    ] = None,
+    output: Annotated[
+        Path | None, typer.Option("--output", "-o", help="FILE.png (.jpg, .tif) of one picture.")
+    ] = None,
     json: Json = False,
 ) -> int:
-    """Draw an overlay of one frame and a contact sheet of each solved trial in DIRECTORY."""
+    """Draw the worst frame, the best, and the whole trial; or one frame, of each trial in DIRECTORY."""
     from condyle.answers import show_pictures
-    from condyle.pipeline import picture as run
+    from condyle.picturing import Beside
+    from condyle.picturing import picture as run
 
-    return show_pictures(run(directory, frame=frame, view=view), as_json=json)
+    made = run(
+        directory,
+        frame=frame,
+        time=time,
+        view=view,
+        size=pixels(size),
+        width_mm=width_mm,
+        dpi=dpi,
+        exaggerate=exaggerate,
+        theme=theme,
+        transparent=transparent,
+        beside=Beside(tuple(ghost or ()), together, axes, ellipsoids, subject),
+        output=output,
+    )
+    return show_pictures(made, as_json=json)
+
+
+@app.command(epilog="Example: condyle report results")
+@guarded
+def report(
+    directory: Annotated[Path, typer.Argument(help="What condyle solve wrote.")],
+    subject: Annotated[
+        Path | None,
+        typer.Option("--subject", help="The trials' subject, if it has moved: for its limits."),
+    ] = None,
+    json: Json = False,
+) -> int:
+    """Write a page for each solved trial in DIRECTORY, and an index of several: open it in a browser."""
+    from condyle.page_answers import show_report
+    from condyle.reporting import report as run
+    from condyle.screen import progress
+
+    with progress("writing") as watch:
+        made = run(directory, subject=subject, watch=watch)
+    return show_report(made, as_json=json)
+
+
+@app.command(epilog="Example: condyle figures results/walk --kind pdf --kind svg")
+@guarded
+def figures(
+    directory: Annotated[Path, typer.Argument(help="What condyle solve wrote.")],
+    kind: Annotated[
+        list[str] | None,
+        typer.Option("--kind", help="png, svg or pdf; repeatable. By default png."),
+    ] = None,
+    subject: Annotated[
+        Path | None,
+        typer.Option("--subject", help="The trials' subject, if it has moved: for its limits."),
+    ] = None,
+    json: Json = False,
+) -> int:
+    """Draw figures for a paper: coordinates with 95 % bands, left over right, errors of the markers."""
+    from condyle.page_answers import show_figures
+    from condyle.reporting import figures as run
+    from condyle.screen import progress
+
+    with progress("drawing") as watch:
+        made = run(directory, kinds=tuple(kind or ("png",)), subject=subject, watch=watch)
+    return show_figures(made, as_json=json)
+
+
+@app.command(epilog="Example: condyle movie results/walk --from 1 --to 3 --speed 0.25")
+@guarded
+def movie(
+    directory: Annotated[Path, typer.Argument(help="What condyle solve wrote.")],
+    start: From = None,
+    end: To = None,
+    speed: Annotated[
+        float, typer.Option("--speed", help="1 is real time, 0.25 four times slower.")
+    ] = 1.0,
+    view: View = "oblique",
+    size: Size = None,
+    exaggerate: Exaggerate = 3.0,
+    theme: Theme = "light",
+    gif: Annotated[bool, typer.Option("--gif", help="Write a GIF too, half as large.")] = False,
+    output: Annotated[
+        Path | None, typer.Option("--output", "-o", help="FILE.mp4 or FILE.gif of one trial.")
+    ] = None,
+    json: Json = False,
+) -> int:
+    """Film the fitted skeleton with the markers measured, for each solved trial in DIRECTORY."""
+    from condyle.answers import show_movies
+    from condyle.filming import movie as run
+
+    return show_movies(
+        lambda watch: run(
+            directory,
+            start=start,
+            end=end,
+            speed=speed,
+            view=view,
+            size=pixels(size),
+            exaggerate=exaggerate,
+            theme=theme,
+            gif=gif,
+            output=output,
+            watch=watch,
+        ),
+        as_json=json,
+    )
 
 
 @app.command(epilog="Example: condyle export subject.yaml --to subject.urdf")

@@ -17,7 +17,9 @@ from condyle.demo_data import (
     read_truth,
 )
 from condyle.model.whole_files import cannot_write
-from condyle.pipeline import SizedSubject, SolvedTrial, calibrate, picture, solve
+from condyle.picturing import Pictures, picture
+from condyle.pipeline import SizedSubject, SolvedTrial, calibrate, solve
+from condyle.reporting import Report, report
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,7 +34,10 @@ class Demonstration:
     trials : SolvedTrials
     lengths : sized lengths against the truth
     angles : trial name -> errors of each angle, both sides together
-    pictures : files
+    pictures : Pictures
+        Without files, and with a note, where this machine cannot draw.
+    report : Report
+        The pages to open.
     """
 
     study: Study
@@ -40,7 +45,8 @@ class Demonstration:
     trials: list[SolvedTrial]
     lengths: tuple[LengthError, ...]
     angles: dict[str, tuple[AngleErrors, ...]]
-    pictures: list[Path]
+    pictures: Pictures
+    report: Report
 
 
 def demo(
@@ -76,10 +82,21 @@ def demo(
     )
     recordings = [trial.recording for trial in study.trials]
     trials = solve(subject.output, recordings, folder / "results", watch=watch)
-    pictures = picture(folder / "results")
+    pictures = _pictures(folder / "results")
+    pages = report(folder / "results")
     angles = {
         solved.fit.motion.name: compare_with_truth(solved.fit, read_truth(trial.truth))
         for trial, solved in zip(study.trials, trials, strict=True)
     }
     lengths = compare_lengths(subject.calibration.skeleton, person)
-    return Demonstration(study, subject, trials, lengths, angles, pictures)
+    return Demonstration(study, subject, trials, lengths, angles, pictures, pages)
+
+
+def _pictures(results: Path) -> Pictures:
+    """The demo's pictures; a machine that cannot draw does the rest all the same."""
+    from condyle.viz.offscreen import NoGraphicsError
+
+    try:
+        return picture(results)
+    except NoGraphicsError as fault:
+        return Pictures([], [str(fault)])

@@ -158,7 +158,7 @@ def _list(names: list[str]) -> str:
 
 def _export_motion(folder: Path, output: Path, subject: str | Path | None) -> Exported:
     _check_ending(output, (".csv", ".parquet"))
-    table = motion_table(folder, load_skeleton(_subject_of(folder, subject)))
+    table = motion_table(folder, load_skeleton(subject_of(folder, subject)))
     if output.suffix.lower() == ".csv":
         _write_csv(table, output)
     else:
@@ -168,7 +168,7 @@ def _export_motion(folder: Path, output: Path, subject: str | Path | None) -> Ex
     return Exported((output,), summary, ())
 
 
-def _subject_of(folder: Path, given: str | Path | None) -> str:
+def subject_of(folder: Path, given: str | Path | None) -> str:
     """The subject that a trial was solved with, if it is still the same."""
     recorded, sha256 = _recorded_subject(folder)
     if sha256 is None:  # a shipped model has no file to compare

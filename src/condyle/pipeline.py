@@ -8,25 +8,23 @@ from pathlib import Path
 from time import perf_counter
 from typing import Any
 
-import numpy as np
-
 from condyle.model import load_skeleton, load_tree
+from condyle.model.body_tables import kept_by_body_table, tree_with_masses, with_body_table
 from condyle.model.errors import CondyleError, FitError
 from condyle.model.skeleton import Skeleton
 from condyle.model.whole_files import cannot_write
 from condyle.model.writing import write_subject
 from condyle.provenance import file_hash, model_hash, versions
-from condyle.recording import read_recording
+from condyle.recording import read_lengths, read_recording
 from condyle.recording.describing import RecordingReport, describe
 from condyle.recording.labels import match_labels, read_label_map, write_label_map
 from condyle.recording.recording import Recording
 from condyle.solver.backends import backend
-from condyle.solver.calibration import calibrate as calibrate_skeleton
-from condyle.solver.draft_map import draft_labels
 from condyle.solver.frame_problem import SkeletonFunctions
+from condyle.solver.marker_size import with_marker_diameter
 from condyle.solver.matching import match_markers
 from condyle.solver.quality import Finding, calibration_findings, trial_findings
-from condyle.solver.result_files import load_motion, save_trial
+from condyle.solver.result_files import save_trial
 from condyle.solver.results import Calibration, TrialFit
 from condyle.solver.robust_loss import LOSSES, Loss
 from condyle.solver.subject_covariance import (
@@ -67,22 +65,30 @@ def calibrate(
     static: str | Path,
     output: str | Path,
     *,
+    moving: Sequence[str | Path] = (),
     mass: float | None = None,
     stature: float | None = None,
+    lengths: str | Path | None = None,
+    marker_diameter: float | None = None,
+    body_table: str | None = None,
     labels: str | Path | None = None,
     units: str | None = None,
     up: str | None = None,
     start: float | None = None,
     end: float | None = None,
 ) -> SizedSubject:
-    """Size a model to the person of a static trial and write SUBJECT.yaml.
+    """Size a model to the person of a static trial, and of movement, and write SUBJECT.yaml.
 
     Parameters
     ----------
     model : a shipped model's name, or a file
     static : the static trial
     output : the file to write
+    moving : trials in which the same person moves
     mass, stature : kg, m
+    lengths : a file ``{segment: m}`` of what a tape measured
+    marker_diameter : m; by default what the model's places are meant for
+    body_table : whose masses, centres and radii: ``de_leva_female`` and so on (`model.body_tables`)
     labels : a file ``{model marker: label in the recording}``
     units : the static's unit of length, ``mm`` or ``m``; wins over what the file declares
     up : the laboratory axis that points up
@@ -93,15 +99,35 @@ def calibrate(
     CondyleError
         If anything in the input is wrong; then nothing is written.
     """
+    # Heavy, and of no use in solving.
+    from condyle.solver.calibration import calibrate as calibrate_skeleton
+
     output = Path(output)
     _check_folder(output.parent)
-    skeleton = load_skeleton(model)
+    skeleton, tree = load_skeleton(model), load_tree(model)
+    findings: list[Finding] = []
+    if body_table is not None:
+        kept = kept_by_body_table(skeleton, body_table)
+        skeleton = with_body_table(skeleton, body_table)
+        tree = tree_with_masses(tree, skeleton)
+        if kept:
+            findings.append(
+                Finding(
+                    f"{body_table} says nothing of {', '.join(kept)}",
+                    "their masses stay as the model has them",
+                )
+            )
     recording = read_recording(Path(static), units=units)
     label_map = _label_map(labels, skeleton)
     _refuse_few_labels(skeleton, recording, label_map, up, output)
+    nominal = skeleton
+    if marker_diameter is not None:
+        nominal = with_marker_diameter(skeleton, marker_diameter)
     found = calibrate_skeleton(
-        skeleton,
+        nominal,
         recording,
+        moving=[read_recording(Path(trial), units=units) for trial in moving],
+        lengths=None if lengths is None else read_lengths(Path(lengths)),
         stature=stature,
         mass=mass,
         labels=label_map,
@@ -109,7 +135,6 @@ def calibrate(
         start=start,
         end=end,
     )
-    tree = load_tree(model)
     sized = found.skeleton
     write_subject(
         output,
@@ -119,19 +144,36 @@ def calibrate(
         subject=sized.subject,
         labels=sized.labels,
         up=sized.up,
+        joints=[joint for joint in sized.joints if joint.placed or joint.axis_turn],
         calibration={
             "model": skeleton.name,
-            "model_sha256": model_hash(str(model), tree),
+            "model_sha256": model_hash(str(model), load_tree(model)),
             "static": Path(static).name,
             "static_sha256": file_hash(Path(static)),
             "still": [round(float(t), 6) for t in found.still],
+            "moving": [
+                {"file": Path(trial).name, "sha256": file_hash(Path(trial))} for trial in moving
+            ],
+            **_given(lengths, marker_diameter, body_table),
             "up": found.up_how,
             "covariance": covariance_file(output).name,
             "condyle": versions()["condyle"],
         },
     )
     write_covariance(covariance_file(output), found.covariance)
-    return SizedSubject(found, output, calibration_findings(found))
+    return SizedSubject(found, output, [*calibration_findings(found), *findings])
+
+
+def _given(
+    lengths: str | Path | None, marker_diameter: float | None, body_table: str | None
+) -> dict[str, object]:
+    """What was told beside the recordings, for the record."""
+    told = {
+        "lengths": None if lengths is None else read_lengths(Path(lengths)),
+        "marker_diameter": marker_diameter,
+        "body_table": body_table,
+    }
+    return {key: value for key, value in told.items() if value is not None}
 
 
 def covariance_file(subject: Path) -> Path:
@@ -145,6 +187,7 @@ def solve(
     output: str | Path,
     *,
     smooth: bool = True,
+    covariance: bool = False,
     loss: str = "squares",
     labels: str | Path | None = None,
     units: str | None = None,
@@ -163,6 +206,8 @@ def solve(
     output : the folder that gets one folder a trial
     smooth : bool
         Whether each trial is one estimate, with rates and accelerations; else each frame is by itself.
+    covariance : bool
+        Whether the covariance of all numbers of each frame is written too (``covariance.npz``).
     loss : ``squares``, or ``huber`` or ``geman_mcclure`` where some markers are plainly wrong
     watch : callable, optional
         Told the trial's name and the share of its work done.
@@ -194,6 +239,7 @@ def solve(
             up=up,
             labels=label_map,
             smooth=smooth,
+            covariance=covariance,
             loss=chosen_loss,
             subject=known,
             functions=functions,
@@ -207,46 +253,6 @@ def solve(
         save_trial(fit, skeleton, folder, findings=findings, origin=origin)
         solved.append(SolvedTrial(fit, folder, findings, seconds))
     return solved
-
-
-def picture(folder: str | Path, *, frame: int | None = None, view: str = "oblique") -> list[Path]:
-    """Draw an overlay of one frame and a contact sheet for every solved trial in a folder.
-
-    Parameters
-    ----------
-    folder : what `solve` wrote, for one trial or for several
-    frame : the recording's own frame number; by default the frame that fits worst
-    view : from where the overlay looks
-
-    Returns
-    -------
-    The pictures written, ``overlay.png`` and ``contact_sheet.png`` in each trial's folder.
-    """
-    # Heavy, and refused without a GL library: only where pictures are made.
-    from condyle.viz.contact_sheet import draw_contact_sheet
-    from condyle.viz.frame_figures import worst_row
-    from condyle.viz.overlays import draw_overlay, save_picture
-
-    written = []
-    for trial in trial_folders(Path(folder)):
-        motion = load_motion(trial)
-        if frame is None:
-            row = worst_row(motion)
-        else:
-            rows = np.flatnonzero(motion.frame == frame)
-            if not len(rows):
-                raise CondyleError(
-                    f"{trial}: there is no frame {frame}.\n"
-                    f"  Frames run from {motion.frame[0]} to {motion.frame[-1]}."
-                )
-            row = int(rows[0])
-        for name, image in (
-            ("overlay.png", draw_overlay(motion, row, view=view)),
-            ("contact_sheet.png", draw_contact_sheet(motion)),
-        ):
-            save_picture(image, trial / name)
-            written.append(trial / name)
-    return written
 
 
 def trial_folders(folder: Path) -> list[Path]:
@@ -315,6 +321,8 @@ def _refuse_few_labels(
     match = match_labels(names, static.labels, labels or {})
     if 2 * len(match.missing) <= len(names):
         return
+    from condyle.solver.draft_map import draft_labels
+
     known = {n: static.labels[c] for n, c in match.columns.items() if c is not None}
     draft = output.with_name(f"{output.stem}_labels_draft.yaml")
     guesses = draft_labels(skeleton, static, known, up)
@@ -346,7 +354,12 @@ def _check_folder(folder: Path) -> None:
 
 
 def _also_calibrated(skeleton: Skeleton, trial: Path) -> list[Finding]:
-    if skeleton.calibration.get("static_sha256") != file_hash(trial):
+    used = [skeleton.calibration.get("static_sha256")]
+    moving = skeleton.calibration.get("moving")
+    used += (
+        [m.get("sha256") for m in moving if isinstance(m, dict)] if isinstance(moving, list) else []
+    )
+    if file_hash(trial) not in used:
         return []
     return [
         Finding(

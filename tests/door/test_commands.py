@@ -153,7 +153,7 @@ def test_pictures_are_drawn_beside_the_results(solved: Path, run: Run) -> None:
     result = run("picture", solved.parent, "--json")
     assert result.exit_code == 0, result.output
     pictures = [Path(path) for path in json.loads(result.stdout)["pictures"]]
-    assert {path.name for path in pictures} == {"overlay.png", "contact_sheet.png"}
+    assert {path.name for path in pictures} == {"worst.png", "best.png", "contact_sheet.png"}
     assert all(path.stat().st_size > 20_000 for path in pictures)
 
 
@@ -389,7 +389,9 @@ def test_wrong_words_end_with_2(run: Run) -> None:
     assert run("solve", "lower_limbs", "x.c3d", "-o", "out", "--sideways").exit_code == 2
 
 
-@pytest.mark.parametrize("command", ["demo", "check", "recording", "calibrate", "solve", "picture"])
+@pytest.mark.parametrize(
+    "command", ["demo", "check", "recording", "calibrate", "solve", "picture", "movie"]
+)
 def test_every_command_has_help_with_an_example(command: str, run: Run) -> None:
     result = run(command, "--help")
     assert result.exit_code == 0
@@ -443,3 +445,20 @@ def test_an_unknown_loss_is_refused_and_a_known_one_is_kept(
     done = run("solve", subject, trial, "-o", tmp_path / "y", "--to", 0.4, "--loss", "huber")
     assert done.exit_code in (0, 1)
     assert json.loads((tmp_path / "y/step_up/fit.json").read_text())["loss"] == "huber"
+
+
+def test_covariances_are_written_for_those_who_ask(
+    study: Path, subject: Path, run: Run, tmp_path: Path
+) -> None:
+    trial = study / "step_up.c3d"
+    out = tmp_path / "out"
+    result = run("solve", subject, trial, "-o", out, "--to", 0.5, "--covariance")
+    assert result.exit_code in (0, 1), result.output
+    table = pd.read_parquet(out / "step_up/coordinates.parquet")
+    with np.load(out / "step_up/covariance.npz") as file:
+        names, covariance = file["names"].tolist(), file["covariance"]
+    knee = names.index("knee_flexion_right")
+    np.testing.assert_allclose(
+        covariance[:, knee, knee], table["knee_flexion_right.sd"] ** 2, rtol=1e-4
+    )
+    assert not list(study.glob("out/**/covariance.npz"))

@@ -106,8 +106,6 @@ def test_room_that_was_used_before_is_written_over() -> None:
     np.testing.assert_array_equal(without(band, fixed, dirty), fresh)
     kept = band.copy(order="F")
     np.testing.assert_array_equal(without(kept, fixed, kept), fresh)  # where it stood
-    H = np.tile(np.diag([1.0, 2.0, 3.0]), (7, 1, 1))
-    np.testing.assert_array_equal(band_of_frames(H, 8, dirty), band_of_frames(H, 8))
 
 
 def test_a_factor_in_place_is_the_same_factor_and_stands_there() -> None:

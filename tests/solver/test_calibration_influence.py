@@ -15,7 +15,8 @@ from condyle.model.growth import sized_marker_at, sized_numbers
 from condyle.model.skeleton import Size, Skeleton
 from condyle.solver.calibration import calibrate
 from condyle.solver.calibration_influence import calibration_doubt, influences
-from condyle.solver.frame_fit import fit_frames
+from condyle.solver.covariances import all_pairs
+from condyle.solver.frame_fit import fit_frames, whole_covariances
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.posture import Posture
 from condyle.solver.subject_covariance import (
@@ -92,7 +93,8 @@ def test_an_influence_is_what_a_refit_shows(sized: Skeleton, entry: str) -> None
     problem = problem_for(sized, positions)
     fits = fit_frames(problem)
     column = entry_names(sized).index(entry)
-    told = influences(problem, fits.posture, fits.covariance)[:, :, column]
+    own = whole_covariances(problem, fits.solution, np.arange(len(problem)))
+    told = influences(problem, fits.posture, own)[:, :, column]
     h = 1e-4
     moved = []
     for sign in (1, -1):
@@ -119,10 +121,12 @@ def test_one_unsure_entry_gives_the_variance_of_its_influence(sized: Skeleton) -
     doubt = calibration_doubt(
         problem,
         fits.posture,
-        fits.covariance,
+        lambda rows: whole_covariances(problem, fits.solution, rows),
         SubjectCovariance(names, entry_values(sized), matrix, "made up"),
+        all_pairs(functions.kinematics.freedoms.size),
     )
-    told = influences(problem, fits.posture, fits.covariance)[:, :, column]
+    own = whole_covariances(problem, fits.solution, np.arange(len(problem)))
+    told = influences(problem, fits.posture, own)[:, :, column]
     np.testing.assert_allclose(
         doubt.covariance, 0.03**2 * told[:, :, None] * told[:, None, :], atol=1e-12
     )

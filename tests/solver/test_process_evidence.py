@@ -6,12 +6,15 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
+from condyle.solver import process_evidence
+from condyle.solver.backends import Backend, backend
 from condyle.solver.process_evidence import (
     LONGEST_HOLE,
     _log_determinant,
     _Series,
     pieces,
     smoothed,
+    smoothed_at,
     weigh,
 )
 
@@ -51,7 +54,7 @@ def test_the_likelihood_differs_from_a_dense_normal_one_by_a_constant() -> None:
     basis = np.linalg.qr(np.vander(x, order, increasing=True))[0]
     differences = []
     for log_ratio in (0.0, 3.0, 6.0):
-        rss, determinant = series._at(log_ratio)
+        rss, determinant = (x[0] for x in series._at(np.array([log_ratio])))
         noise = rss / (seen.sum() - order)
         ours = -0.5 * ((seen.sum() - order) * (np.log(noise) + 1) + determinant)
         scale = float(np.median(1 / variance[seen]))
@@ -161,8 +164,8 @@ def test_the_likelihood_of_two_pieces_is_that_of_each() -> None:
     seen = np.ones(1200, dtype=bool)
     seen[400:800] = False
     first, last = (y[part] for part in (slice(0, 400), slice(800, 1200)))
-    both = _Series(y, variance, seen, 4)._at(3.0)
-    alone = [_Series(z, variance[:400], seen[:400], 4)._at(3.0) for z in (first, last)]
+    both = _Series(y, variance, seen, 4)._at(np.array([3.0]))
+    alone = [_Series(z, variance[:400], seen[:400], 4)._at(np.array([3.0])) for z in (first, last)]
     np.testing.assert_allclose(both, np.sum(alone, axis=0), rtol=1e-6)
 
 
@@ -197,3 +200,23 @@ def test_scattered_gaps_are_no_loss() -> None:
     found = weigh(spoilt[:, None], variance, seen[:, None], least_kappa=0.01)
     assert found.kappa[0] == pytest.approx(1.0, rel=0.15)
     assert found.moving[0]
+
+
+@pytest.mark.parametrize("order", [3, 4])
+def test_the_compiled_kernel_and_lapack_weigh_a_series_alike(
+    order: int, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    if backend().library is None:
+        pytest.skip("there is no compiler here")
+    y = simulated(order, 5.0, 400, 1)
+    precision = np.where(np.random.default_rng(2).random(400) < 0.1, 0.0, 1.0)
+    squares = process_evidence._squares_band(order, 400)
+    ratios = 10.0 ** np.linspace(-2, 7, 19)
+    compiled = smoothed_at(y, precision, squares, order, ratios)
+    monkeypatch.setattr(process_evidence, "backend", lambda: Backend("replay"))
+    for one, other in zip(compiled, smoothed_at(y, precision, squares, order, ratios), strict=True):
+        np.testing.assert_allclose(one, other, rtol=1e-6)
+    spoilt = smoothed_at(y, -precision, squares, order, ratios[:2])
+    monkeypatch.undo()
+    np.testing.assert_array_equal(smoothed_at(y, -precision, squares, order, ratios[:2]), spoilt)
+    assert np.isinf(spoilt).all()

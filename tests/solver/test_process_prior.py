@@ -9,9 +9,9 @@ from scipy.integrate import quad
 from scipy.linalg import solveh_banded
 from scipy.spatial.transform import Rotation
 
+from condyle.solver.block_banded import system_band
 from condyle.solver.posture import Posture, quaternions_of
 from condyle.solver.process_prior import ProcessPrior, difference_weights, mean_reversion
-from condyle.solver.trial_smoother import system_band
 
 FloatArray = NDArray[np.float64]
 FRAMES, SCALARS, BALLS = 9, 3, 2

@@ -196,3 +196,35 @@ def test_frames_by_themselves_have_no_rates(alone: Path) -> None:
     segments = pd.read_parquet(alone / "segments.parquet")
     assert not {"vx", "vy", "vz", "wx", "wy", "wz"} & set(segments.columns)
     assert not pd.read_csv(alone / "columns.csv")["column"].str.contains("rate|accel").any()
+
+
+@pytest.mark.parametrize("smooth", [True, False])
+def test_covariances_on_request_hold_the_sds_and_what_joins_the_numbers(
+    skeleton: Skeleton, recording: Recording, tmp_path: Path, *, smooth: bool
+) -> None:
+    fit = fit_trial(skeleton, recording, up="Y", smooth=smooth, covariance=True)
+    save_trial(fit, skeleton, tmp_path / "out", findings=[], origin={})
+    table = pd.read_parquet(tmp_path / "out" / "coordinates.parquet")
+    with np.load(tmp_path / "out" / "covariance.npz") as file:
+        frame, names, units, covariance = (
+            file[key] for key in ("frame", "names", "units", "covariance")
+        )
+    assert covariance.dtype == np.float32
+    assert covariance.shape == (FRAMES, len(names), len(names))
+    np.testing.assert_array_equal(frame, table["frame"])
+    assert dict(zip(names, units, strict=True))["px"] == "m"
+    assert dict(zip(names, units, strict=True))["bend"] == "deg"
+    for i, name in enumerate(names):
+        variance = table[f"{name}.sd"].to_numpy() ** 2
+        np.testing.assert_allclose(covariance[:, i, i], variance, rtol=1e-4)  # NaN where NaN
+    np.testing.assert_allclose(covariance, np.swapaxes(covariance, 1, 2), rtol=1e-3, atol=1e-6)
+    told = np.isfinite(covariance[100]).all(axis=0)
+    assert np.linalg.eigvalsh(covariance[100][np.ix_(told, told)].astype(float)).min() > -1e-6
+    bend = list(names).index("bend")
+    assert np.isnan(covariance[350, bend]).all() == np.isnan(table["bend.sd"][350])
+    # The flap's angle leans on the body's: one turned too far, the other not enough.
+    assert np.abs(np.delete(covariance[100, bend], bend)).max() > 0.01 * covariance[100, bend, bend]
+
+
+def test_nobody_who_does_not_ask_gets_covariances(smoothed: Path) -> None:
+    assert not (smoothed / "covariance.npz").exists()

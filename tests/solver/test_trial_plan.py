@@ -120,7 +120,7 @@ def test_a_floating_trial_is_smoothed_and_bridged_with_its_orientations(
         np.stack([(sd[:, 4:7] ** 2).sum(axis=1), (sd[:, SHOULDER] ** 2).sum(axis=1)], axis=1)
     )
     assert (ball_errors(found.fits.posture)[gap] < 3 * balls[gap]).all()
-    white = found.white[:, SHOULDER, SHOULDER]
+    white = np.asarray(found.white)[:, SHOULDER, SHOULDER]
     assert np.trace(white[156]) > 1.5 * np.trace(white[100])
 
 
