@@ -19,15 +19,11 @@ WIDE, NARROW = 1.0, 0.25
 FLOOR_TOLERANCE = 0.025
 """m; a floor found this near the laboratory's zero is the laboratory's zero."""
 
-SHADOW_PIXELS = 320
-"""Across the shadow's square."""
+SHADOW_PIXELS, ROUGH_SHADOW_PIXELS = 320, 180
+"""Across the shadow's square, for stills and for films."""
 
 SHADOW_BANDS = ((0.0, 0.06, 0.011), (0.06, 0.25, 0.022), (0.25, 0.6, 0.045), (0.6, 4.0, 0.085))
 """m; from height, to height, and how wide the shadow of what is there spreads."""
-
-SHADOW_COLOUR = (38, 48, 66)
-DARKEST = 0.50
-"""Opacity where the shadow is fullest."""
 
 
 def floor_height(lowest: FloatArray) -> float:
@@ -67,7 +63,14 @@ def fade(points: FloatArray, centre: FloatArray, reach: float) -> FloatArray:
 
 
 def shadow_image(
-    level_points: FloatArray, heights: FloatArray, centre: FloatArray, half_width: float
+    level_points: FloatArray,
+    heights: FloatArray,
+    centre: FloatArray,
+    half_width: float,
+    colour: tuple[int, int, int],
+    darkest: float,
+    *,
+    pixels: int = SHADOW_PIXELS,
 ) -> NDArray[np.uint8]:
     """(pixels, pixels, 4): the shadow's colour and opacity, its first row at the low second axis.
 
@@ -77,19 +80,21 @@ def shadow_image(
         Where on the floor the light throws the figure's points.
     heights : (n,) m
         How high above the floor they were.
+    darkest : float
+        Opacity where the shadow is fullest.
     """
-    edges = np.linspace(-half_width, half_width, SHADOW_PIXELS + 1)
+    edges = np.linspace(-half_width, half_width, pixels + 1)
     pixel = edges[1] - edges[0]
-    light = np.ones((SHADOW_PIXELS, SHADOW_PIXELS))
+    light = np.ones((pixels, pixels))
     for low, high, spread in SHADOW_BANDS:
         inside = (heights >= low) & (heights < high)
         if low == 0.0:
             inside |= heights < 0.0
         x, y = (level_points[inside] - centre).T
         hits, _, _ = np.histogram2d(y, x, bins=(edges, edges))
-        covered = gaussian_filter(np.minimum(hits, 1.0), spread / pixel)
+        covered = gaussian_filter(np.minimum(hits, 1.0).astype(np.float32), spread / pixel)
         light *= 1.0 - np.clip(1.15 * covered, 0.0, 1.0)
-    image = np.empty((SHADOW_PIXELS, SHADOW_PIXELS, 4), dtype=np.uint8)
-    image[..., :3] = SHADOW_COLOUR
-    image[..., 3] = np.round(255 * DARKEST * (1.0 - light))
+    image = np.empty((pixels, pixels, 4), dtype=np.uint8)
+    image[..., :3] = colour
+    image[..., 3] = np.round(255 * darkest * (1.0 - light))
     return image

@@ -47,13 +47,17 @@ class FrameFigures:
 
     def line(self) -> str:
         """One line for a person to read."""
+        return "  ·  ".join(self.parts())
+
+    def parts(self) -> list[str]:
+        """The parts of that line."""
         parts = [f"t = {self.time:.2f} s, frame {self.frame}", f"{counted(self.used)} used"]
         parts += [f"{self.missing} missing"] if self.missing else []
         parts += [f"{self.left_out} left out"] if self.left_out else []
         if self.used:
             parts += [f"RMS residual {self.rms_mm:.1f} mm"]
             parts += [f"worst {self.worst} {self.worst_mm:.1f} mm"]
-        return "  ·  ".join(parts)
+        return parts
 
 
 def counted(markers: int) -> str:

@@ -80,7 +80,8 @@ def choose_window() -> str | None:
     asked = f" by {chosen}, which {WINDOW_VARIABLE} asks for" if chosen else ""
     raise NoGraphicsError(
         f"no picture can be drawn{asked}: no OpenGL answers here. On Debian or Ubuntu, "
-        "'apt install libegl1 libgl1-mesa-dri' brings it (no graphics card or screen is needed)."
+        "'apt install libegl1 libgl1-mesa-dri', or libosmesa6 alone, brings it (no graphics card or "
+        "screen is needed)."
     )
 
 

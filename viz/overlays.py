@@ -1,40 +1,26 @@
-"""Check images: the fitted skeleton with the markers it was fitted to, and what misses by how much.
+"""Check images in the fewest words: one frame, from one side, as everything else of the project draws it.
 
-One picture shows one frame at full size; a contact sheet shows the whole trial. Both state their
-exaggeration and say that they are a measuring aid.
+Stills with more to say are composed in `stills`; here are the plain one, its camera, and saving.
 """
 
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
-import numpy as np
 from PIL import Image
 
 from condyle.model.errors import CondyleError
 from condyle.model.whole_files import whole_file
 from condyle.solver.results import FittedMotion
-from condyle.viz import palette
 from condyle.viz.contact_sheet import draw_contact_sheet
-from condyle.viz.drawn_markers import DrawnMarkers, place_markers
-from condyle.viz.figure import Figure, build_figure
-from condyle.viz.floor import NARROW, WIDE
-from condyle.viz.frame_figures import (
-    CAUTION,
-    best_row,
-    frame_figures,
-    typical_row,
-    worst_row,
-)
-from condyle.viz.legend import (
-    calm_foot,
-    draw_left_out,
-    draw_legend,
-    legend_entries,
-    write_within,
-)
-from condyle.viz.scene import SUPERSAMPLING, Scene
-from condyle.viz.viewpoint import Camera, Room, ViewError, facing, frame_points, look_from
+from condyle.viz.drawn_markers import place_markers
+from condyle.viz.extras import Extras
+from condyle.viz.figure import build_figure
+from condyle.viz.frame_figures import best_row, typical_row, worst_row
+from condyle.viz.look import Look
+from condyle.viz.stills import draw_still, row_of, setting_of, still_camera, words_of
+from condyle.viz.viewpoint import Camera
 
 __all__ = [
     "best_row",
@@ -46,18 +32,6 @@ __all__ = [
     "typical_row",
     "worst_row",
 ]
-
-DESIGN_WIDTH = 1280.0
-"""Pixels; the width at which the lettering has its full size."""
-
-MARGIN = 36.0
-"""Pixels at the design width, left and right of every line of text."""
-
-HEADER, FOOTER = 112.0, 120.0
-"""Pixels at the design width that the figure leaves free for words, at the top and the foot."""
-
-SMALLEST_UNIT = 0.62
-"""Lettering is not scaled down further than this, or nobody could read it."""
 
 
 class PictureError(CondyleError):
@@ -79,7 +53,7 @@ def draw_overlay(
     row : int
         Which row of ``motion``.
     view : str
-        `front`, `side` (from the person's right) or `oblique`.
+        `front`, `side` (from the person's right), `oblique` or `top`.
     size : (width, height) pixels
     exaggeration : float
         How many times longer than they are the residuals are drawn; the picture says so.
@@ -91,16 +65,7 @@ def draw_overlay(
     NoGraphicsError
         Where the machine cannot draw.
     """
-    figure = build_figure(motion)
-    camera = place_camera(figure, row, view=view, size=size, exaggeration=exaggeration)
-    markers = place_markers(motion, row, exaggeration=exaggeration)
-    with Scene(figure, size) as scene:
-        large = scene.render(row, camera, exaggeration=exaggeration)
-    outside = draw_left_out(large, markers, camera)
-    image = large.reduce(SUPERSAMPLING)
-    letter(image, motion, row)
-    legend(image, motion, markers, exaggeration=exaggeration, outside=outside)
-    return image
+    return draw_still(motion, row, Look(view, size, exaggeration))
 
 
 def overlay_camera(
@@ -112,69 +77,16 @@ def overlay_camera(
     exaggeration: float = 3.0,
 ) -> Camera:
     """The camera that ``draw_overlay`` uses when given the same arguments."""
-    return place_camera(build_figure(motion), row, view=view, size=size, exaggeration=exaggeration)
+    return camera_of(motion, row, Look(view, size, exaggeration))
 
 
-def place_camera(
-    figure: Figure, row: int, *, view: str, size: tuple[int, int], exaggeration: float
-) -> Camera:
-    """The camera that sees the whole figure and its markers from the named side."""
-    motion = figure.motion
-    if not 0 <= row < len(motion.time):
-        raise ViewError(
-            f"'{motion.name}' has no row {row}; its rows are 0 to {len(motion.time) - 1}."
-        )
-    towards_camera = look_from(view, facing(motion, np.array([row])), figure.up)
-    points = figure.points(row, place_markers(motion, row, exaggeration=exaggeration))
-    return frame_points(points, towards_camera, figure.up, size, room_for_figure(size))
-
-
-def lettering_unit(width: int) -> float:
-    """How large lettering is in a picture so wide, next to its size at the design width."""
-    return max(width / DESIGN_WIDTH, SMALLEST_UNIT)
-
-
-def room_for_figure(size: tuple[int, int]) -> Room:
-    """The picture without the words; never less than its middle third."""
-    unit = lettering_unit(size[0]) / size[1]
-    return Room(0.05, 0.95, min(HEADER * unit, 0.33), max(1.0 - FOOTER * unit, 0.67))
-
-
-def letter(image: Image.Image, motion: FittedMotion, row: int) -> None:
-    """Write the title and the line of figures at the top."""
-    unit = lettering_unit(image.width)
-    left, width = MARGIN * unit, image.width - 2.0 * MARGIN * unit
-    title = f"{motion.name}: fitted skeleton and measured markers"
-    write_within(image, (left, 54 * unit), title, 25 * unit, width=width, bold=True)
-    line = frame_figures(motion, row).line()
-    write_within(image, (left, 84 * unit), line, 16.5 * unit, width=width, colour=palette.SOFT_INK)
-
-
-def legend(
-    image: Image.Image,
-    motion: FittedMotion,
-    markers: DrawnMarkers,
-    *,
-    exaggeration: float,
-    outside: int,
-) -> None:
-    """Say what the signs mean, what the floor's lines measure, and what the picture is not."""
-    unit = lettering_unit(image.width)
-    left, foot = MARGIN * unit, image.height
-    calm_foot(image, from_height=foot - 118 * unit, until_height=foot - 74 * unit)
-    entries = legend_entries(motion, [markers], exaggeration=exaggeration, outside=outside)
-    draw_legend(image, entries, left=left, baseline=foot - 58 * unit, pixels=16.5 * unit)
-    note = f"{CAUTION}  Floor lines {NARROW:g} m and {WIDE:g} m apart."
-    if len(markers.fitted) and exaggeration != 1.0:
-        note = f"{note}  Measured markers stand at the end of the lengthened residual."
-    write_within(
-        image,
-        (left, foot - 29 * unit),
-        note,
-        13.5 * unit,
-        width=image.width - 2.0 * left,
-        colour=palette.SOFT_INK,
-    )
+def camera_of(motion: FittedMotion, row: int, look: Look, extras: Extras | None = None) -> Camera:
+    """The camera that ``draw_still`` uses when given the same arguments."""
+    extras = extras or Extras()
+    figure = build_figure(motion)
+    markers = place_markers(motion, row_of(motion, row), exaggeration=look.exaggeration)
+    setting = setting_of(words_of(motion, row, markers, look, extras), look)
+    return still_camera(figure, row, look, extras, setting)
 
 
 def picture_kind(path: Path | str) -> str:
@@ -192,8 +104,10 @@ def picture_kind(path: Path | str) -> str:
     return str(kind)
 
 
-def save_picture(image: Image.Image, path: Path | str) -> None:
+def save_picture(image: Image.Image, path: Path | str, *, dpi: float | None = None) -> None:
     """Write the picture whole or not at all; the path's ending names its kind (.png, .jpg).
+
+    `dpi` is noted in the file where its kind can hold it.
 
     Raises
     ------
@@ -204,5 +118,8 @@ def save_picture(image: Image.Image, path: Path | str) -> None:
     """
     path = Path(path)
     kind = picture_kind(path)
+    noted: dict[str, Any] = {} if dpi is None else {"dpi": (dpi, dpi), "resolution": dpi}
+    if image.mode == "RGBA" and kind in ("JPEG", "PDF", "BMP"):
+        raise PictureError(f"{path}: {kind} holds no transparency; '.png' does.")
     with whole_file(path) as beside:
-        image.save(beside, format=kind)
+        image.save(beside, format=kind, **noted)

@@ -8,6 +8,7 @@ smooths better for its price than the graphics library's own way.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 from types import TracebackType
 from typing import Any, Self
 
@@ -15,13 +16,15 @@ import numpy as np
 from numpy.typing import NDArray
 from PIL import Image
 
-from condyle.viz import floor, palette
+from condyle.viz import ground
 from condyle.viz.drawn_markers import DrawnMarkers, place_markers
 from condyle.viz.figure import Figure
-from condyle.viz.offscreen import open_pyvista
-from condyle.viz.shapes import Surface
-from condyle.viz.skeleton_plan import side_of
-from condyle.viz.viewpoint import Camera, level_axes, unit
+from condyle.viz.floor import ROUGH_SHADOW_PIXELS, SHADOW_PIXELS
+from condyle.viz.layers import Pixels, without_ground
+from condyle.viz.palette import Colour
+from condyle.viz.theme import LIGHT, Theme
+from condyle.viz.viewpoint import Camera
+from condyle.viz.window import COARSE_BALL, FINE_BALL, Window
 
 FloatArray = NDArray[np.float64]
 
@@ -34,29 +37,37 @@ MARKER_SIZE = 0.0062
 SHADOW_POINTS = 9000
 """Points per bone that throw shadow, at most."""
 
-BONE_LOOK = {"ambient": 0.38, "diffuse": 0.80, "specular": 0.08, "specular_power": 18}
-MARKER_LOOK = {"ambient": 0.55, "diffuse": 0.60, "specular": 0.12, "specular_power": 25}
+REACH = 2.6
+"""How far the floor's grid is drawn, as a share of the picture's visible height."""
+
+LEAST_REACH = 2.0
+"""m"""
 
 
-ARROWHEAD_LENGTH, ARROWHEAD_RADIUS = 7.5, 2.9
-"""Of the radius of the arrow's bar."""
+MARKER_NAMES = ("fitted", "fitted rim", "measured", "measured rim", "alone", "residuals")
+"""Of what `Scene` draws of markers in its window."""
 
 
-def shortened(path: FloatArray, by: float) -> FloatArray:
-    """A path (n, 3) without the last `by` metres of its length; two points at least."""
-    if by <= 0.0:
-        return path
-    steps = np.linalg.norm(np.diff(path, axis=0), axis=1)
-    along = np.concatenate([[0.0], np.cumsum(steps)])
-    end = max(along[-1] - by, 0.02 * along[-1])
-    cut = np.array([np.interp(end, along, path[:, axis]) for axis in range(3)])
-    return np.concatenate([path[along < end], cut[None]])
+@dataclass(frozen=True, slots=True)
+class Detail:
+    """How finely a scene is drawn.
+
+    Attributes
+    ----------
+    sampling : float
+        Drawn this many times larger in each direction, then reduced.
+    shadow_points, shadow_pixels : per bone at most, and across the shadow
+    ball : corners of a marker; see `Window`
+    """
+
+    sampling: float = SUPERSAMPLING
+    shadow_points: int = SHADOW_POINTS
+    shadow_pixels: int = SHADOW_PIXELS
+    ball: tuple[int, int] = FINE_BALL
 
 
-def bone_colour(segment: str) -> palette.Colour:
-    """Warm on the right, cool on the left, so that a side view can be read."""
-    colours = {"right": palette.RIGHT_BONE, "left": palette.LEFT_BONE}
-    return colours.get(side_of(segment), palette.MIDDLE_BONE)
+FILM_DETAIL = Detail(1.5, 1500, ROUGH_SHADOW_PIXELS, COARSE_BALL)
+"""Enough for what moves, and twice as fast."""
 
 
 class Scene:
@@ -67,18 +78,30 @@ class Scene:
     figure : Figure
     size : (width, height)
         Pixels of the finished picture.
+    theme : Theme
+    detail : Detail
+        Of stills, or of films.
     """
 
-    def __init__(self, figure: Figure, size: tuple[int, int]) -> None:
+    def __init__(
+        self,
+        figure: Figure,
+        size: tuple[int, int],
+        *,
+        theme: Theme = LIGHT,
+        detail: Detail | None = None,
+    ) -> None:
         self.figure = figure
         self.motion = figure.motion
         self.size = size
-        self._pyvista = open_pyvista()
-        self._plotter = self._open_window()
-        self._bone_actors = [
-            self._add_bone(name, bone)
-            for name, bone in zip(self.motion.segment_names, figure.bones, strict=True)
-        ]
+        self.theme = theme
+        self._detail = detail or Detail()
+        sampling = self._detail.sampling
+        self._large = (round(sampling * size[0]), round(sampling * size[1]))
+        self.window = Window(self._large, self._detail.ball)
+        self.window.ground(theme.ground, theme.sky)
+        self._bones = self._add_bones(figure, "bone", None)
+        self._ghosts = 0
 
     def __enter__(self) -> Self:
         return self
@@ -93,7 +116,7 @@ class Scene:
 
     def close(self) -> None:
         """Give the window back."""
-        self._plotter.close()
+        self.window.close()
 
     def render(
         self,
@@ -113,20 +136,72 @@ class Scene:
         with_bones : bool
             False leaves the bones out, but not their shadow.
         """
-        markers = place_markers(self.motion, row, exaggeration=exaggeration)
-        self._move_bones(row)
+        self.show(row, camera, exaggeration=exaggeration, marker_radius=marker_radius)
         if not with_bones:
-            for actor in self._bone_actors:
+            for actor in self._bones:
                 actor.visibility = False
+        return Image.fromarray(self.window.shoot())
+
+    def show(
+        self,
+        row: int,
+        camera: Camera,
+        *,
+        exaggeration: float,
+        marker_radius: float | None = None,
+    ) -> None:
+        """Put everything of a row in its place, and the camera before it."""
+        markers = place_markers(self.motion, row, exaggeration=exaggeration)
+        poses = self.motion.laboratory_from_segment[row]
+        self._move(self._bones, poses, self.figure.posed(row))
         self._draw_markers(markers, marker_radius or MARKER_SIZE * camera.visible_height())
-        self._draw_floor(row, camera, markers)
-        self._aim(camera)
-        self._plotter.render()
-        return Image.fromarray(self._plotter.screenshot(return_img=True))
+        points = self.figure.points(row, markers)
+        centre = ground.level_centre(self.figure, points)
+        reach = max(REACH * camera.visible_height(), LEAST_REACH)
+        ground.draw_grid(self.window, self.figure, centre, reach, self.theme, self._large[0])
+        shade = self.figure.bone_points(row, self._detail.shadow_points)
+        ground.draw_shadow(
+            self.window,
+            self.figure,
+            shade,
+            camera,
+            centre,
+            self.theme,
+            pixels=self._detail.shadow_pixels,
+        )
+        self.window.aim(camera)
+
+    def shoot(self, *, transparent: bool = False) -> Pixels:
+        """(height, width, 4): what was put in place; without its ground where asked for."""
+        if not transparent:
+            colour = self.window.shoot()
+            return np.dstack([colour, np.full(colour.shape[:2], 255, dtype=np.uint8)])
+        shots = []
+        for level in (0, 255):
+            plain: Colour = (level, level, level)
+            self.window.ground(plain, plain)
+            shots.append(self.window.shoot())
+        self.window.ground(self.theme.ground, self.theme.sky)
+        return without_ground(*shots)
+
+    def add_ghost(self, figure: Figure, row: int, poses: FloatArray, colour: Colour) -> list[str]:
+        """Add another figure's bones; gives the names by which to lay them over a picture.
+
+        Parameters
+        ----------
+        row : int
+            Of the other motion.
+        poses : (segments, 4, 4)
+            Where its segments are drawn, laboratory axes.
+        """
+        self._ghosts += 1
+        kind = f"ghost {self._ghosts}"
+        self._move(self._add_bones(figure, kind, colour), poses, figure.posed(row))
+        return [f"{kind} {index}" for index in np.flatnonzero(figure.posed(row))]
 
     def draw_balls(self, name: str, centres: FloatArray, radius: float, colour: Any) -> None:
         """Balls at centres (n, 3) m in place of those last drawn under that name; none where n is 0."""
-        self._balls(name, centres, radius, colour)
+        self.window.balls(name, centres, radius, colour)
 
     def draw_paths(
         self, name: str, paths: Sequence[FloatArray], radius: float, colour: Any, *, heads: bool
@@ -135,148 +210,29 @@ class Scene:
 
         They stand in place of those last drawn under that name.
         """
-        self._plotter.remove_actor(name, render=False)
-        if not paths:
-            return
-        head = ARROWHEAD_LENGTH * radius if heads else 0.0
-        parts = []
-        for path in paths:
-            line = self._pyvista.MultipleLines(shortened(path, 0.8 * head))
-            parts.append(line.tube(radius=radius, n_sides=14))
-            if heads:
-                tangent = path[-1] - shortened(path, head)[-1]
-                cone = self._pyvista.Cone(
-                    center=path[-1] - 0.5 * head * unit(tangent),
-                    direction=unit(tangent),
-                    height=head,
-                    radius=ARROWHEAD_RADIUS * radius,
-                    resolution=28,
-                )
-                parts.append(cone.compute_normals(split_vertices=True, feature_angle=50))
-        mesh = self._pyvista.merge(parts)
-        self._show(name, mesh, color=colour, interpolation="Phong", **MARKER_LOOK)
+        self.window.paths(name, paths, radius, colour, heads=heads)
 
-    def _open_window(self) -> Any:
-        size = [SUPERSAMPLING * side for side in self.size]
-        plotter = self._pyvista.Plotter(off_screen=True, window_size=size, lighting="none")
-        plotter.render_window.SetMultiSamples(0)
-        plotter.set_background(palette.GROUND, top=palette.SKY)
-        return plotter
+    def _add_bones(self, figure: Figure, kind: str, colour: Colour | None) -> list[Any]:
+        return [
+            self.window.show_bone(f"{kind} {index}", bone, colour or self.theme.bone(name))
+            for index, (name, bone) in enumerate(
+                zip(figure.motion.segment_names, figure.bones, strict=True)
+            )
+        ]
 
-    def _add_bone(self, name: str, bone: Surface) -> Any:
-        mesh = self._pyvista.PolyData.from_regular_faces(bone.points, bone.faces)
-        mesh.point_data.active_normals = bone.normals
-        return self._plotter.add_mesh(
-            mesh,
-            color=bone_colour(name),
-            interpolation="Phong",
-            reset_camera=False,
-            render=False,
-            **BONE_LOOK,
-        )
-
-    def _move_bones(self, row: int) -> None:
-        for index, posed in enumerate(self.figure.posed(row)):
-            actor = self._bone_actors[index]
-            actor.visibility = bool(posed)
-            if posed:
-                actor.user_matrix = self.motion.laboratory_from_segment[row, index]
+    @staticmethod
+    def _move(actors: list[Any], poses: FloatArray, posed: NDArray[np.bool_]) -> None:
+        for actor, pose, known in zip(actors, poses, posed, strict=True):
+            actor.visibility = bool(known)
+            if known:
+                actor.user_matrix = pose
 
     def _draw_markers(self, markers: DrawnMarkers, radius: float) -> None:
-        self._balls("fitted", markers.fitted, 0.8 * radius, palette.ORANGE)
-        self._balls("measured", markers.measured, radius, palette.BLUE)
-        self._balls("alone", markers.alone, 0.8 * radius, palette.PALE_ORANGE)
+        theme, window = self.theme, self.window
+        rim = theme.outline
+        window.balls("fitted", markers.fitted, 0.8 * radius, theme.fitted, outline=rim)
+        window.balls("measured", markers.measured, radius, theme.measured, outline=rim)
+        window.balls("alone", markers.alone, 0.8 * radius, theme.alone)
         pairs = np.stack([markers.fitted, markers.measured], axis=1)
         long = np.linalg.norm(pairs[:, 0] - pairs[:, 1], axis=1) > 1e-6
-        self._bars("residuals", pairs[long], 0.36 * radius, palette.VERMILLION)
-
-    def _balls(self, name: str, centres: FloatArray, radius: float, colour: Any) -> None:
-        self._plotter.remove_actor(name, render=False)
-        if len(centres):
-            ball = self._pyvista.Sphere(radius=radius, theta_resolution=20, phi_resolution=14)
-            mesh = self._pyvista.PolyData(centres).glyph(geom=ball, scale=False, orient=False)
-            self._show(name, mesh, color=colour, interpolation="Phong", **MARKER_LOOK)
-
-    def _bars(self, name: str, pairs: FloatArray, radius: float, colour: Any) -> None:
-        self._plotter.remove_actor(name, render=False)
-        if len(pairs):
-            lines = self._pyvista.line_segments_from_points(pairs.reshape(-1, 3))
-            mesh = lines.tube(radius=radius, n_sides=10)
-            self._show(name, mesh, color=colour, interpolation="Phong", **MARKER_LOOK)
-
-    def _show(self, name: str, mesh: Any, **look: Any) -> None:
-        self._plotter.add_mesh(mesh, name=name, reset_camera=False, render=False, **look)
-
-    def _draw_floor(self, row: int, camera: Camera, markers: DrawnMarkers) -> None:
-        first, second, _ = level_axes(self.figure.up)
-        points = self.figure.points(row, markers)
-        middle = 0.5 * (points.min(axis=0) + points.max(axis=0))
-        centre = np.array([middle @ first, middle @ second])
-        reach = max(2.6 * camera.visible_height(), 2.0)
-        for spacing, strength, width in ((floor.NARROW, 0.34, 1.4), (floor.WIDE, 0.78, 2.2)):
-            lines = floor.grid_lines(centre, reach, spacing)
-            opacity = strength * floor.fade(lines, centre, reach)
-            self._draw_grid(f"grid {spacing}", self._on_floor(lines), opacity, width)
-        self._draw_shadow(row, camera, centre)
-
-    def _on_floor(self, level: FloatArray, lift: float = 0.0) -> FloatArray:
-        first, second, up = level_axes(self.figure.up)
-        flat = level[..., :1] * first + level[..., 1:] * second
-        return np.asarray(flat + (self.figure.floor + lift) * up)
-
-    def _draw_grid(self, name: str, lines: FloatArray, opacity: FloatArray, width: float) -> None:
-        count, length = lines.shape[:2]
-        links = np.arange(count * length).reshape(count, length)
-        cells = np.concatenate([np.full((count, 1), length), links], axis=1).ravel()
-        mesh = self._pyvista.PolyData(lines.reshape(-1, 3), lines=cells)
-        colours = np.empty((count * length, 4), dtype=np.uint8)
-        colours[:, :3] = palette.GRID
-        colours[:, 3] = np.round(255 * opacity.ravel())
-        mesh["colour"] = colours
-        self._plotter.remove_actor(name, render=False)
-        self._show(name, mesh, scalars="colour", rgb=True, lighting=False, line_width=width)
-
-    def _draw_shadow(self, row: int, camera: Camera, centre: FloatArray) -> None:
-        self._plotter.remove_actor("shadow", render=False)
-        points = self.figure.bone_points(row, SHADOW_POINTS)
-        if not len(points):
-            return
-        first, second, up = level_axes(self.figure.up)
-        right, _, back = camera.axes()
-        light = up + 0.16 * back - 0.22 * right
-        heights = points @ up - self.figure.floor
-        thrown = points - heights[:, None] * light / (light @ up)
-        level = np.stack([thrown @ first, thrown @ second], axis=1)
-        half = float(np.abs(level - centre).max()) + 0.35
-        corners = centre + half * np.array([[-1, -1], [1, -1], [1, 1], [-1, 1]])
-        mesh = self._pyvista.PolyData.from_regular_faces(
-            self._on_floor(corners, -0.001), np.array([[0, 1, 2, 3]])
-        )
-        mesh.active_texture_coordinates = np.array([[0, 0], [1, 0], [1, 1], [0, 1]], dtype=float)
-        image = floor.shadow_image(level, heights, centre, half)
-        texture = self._pyvista.Texture(image[::-1].copy())
-        texture.interpolate = True
-        self._show("shadow", mesh, texture=texture, lighting=False)
-
-    def _aim(self, camera: Camera) -> None:
-        plotter = self._plotter
-        plotter.camera.position = tuple(camera.position)
-        plotter.camera.focal_point = tuple(camera.focal_point)
-        plotter.camera.up = tuple(camera.up)
-        plotter.camera.view_angle = camera.view_angle
-        plotter.reset_camera_clipping_range()
-        right, upright, back = camera.axes()
-        plotter.remove_all_lights()
-        for direction, strength in (
-            (back + 1.3 * upright - 0.9 * right, 0.72),
-            (1.0 * back - 0.6 * upright + 0.6 * right, 0.36),
-            (-0.9 * back + 0.9 * upright + 0.8 * right, 0.26),
-        ):
-            light = self._pyvista.Light(
-                position=tuple(camera.focal_point + direction),
-                focal_point=tuple(camera.focal_point),
-                intensity=strength,
-                light_type="scene light",
-            )
-            light.positional = False
-            plotter.add_light(light)
+        window.bars("residuals", pairs[long], 0.36 * radius, theme.residual)

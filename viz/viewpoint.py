@@ -20,6 +20,7 @@ VIEWS: dict[str, tuple[float, float]] = {
     "front": (0.0, 4.0),
     "side": (90.0, 4.0),
     "oblique": (38.0, 11.0),
+    "top": (0.0, 90.0),
 }
 """View -> degrees turned from the person's front to their right, and degrees above level."""
 
@@ -160,6 +161,11 @@ def look_from(view: str, forward: FloatArray, up: FloatArray) -> FloatArray:
     return np.asarray(np.cos(raised) * level + np.sin(raised) * up)
 
 
+def picture_up(view: str, forward: FloatArray, up: FloatArray) -> FloatArray:
+    """(3,): what is up in the picture: the laboratory's up, or from above the way the person faces."""
+    return forward if view == "top" else up
+
+
 def frame_points(
     points: FloatArray,
     towards_camera: FloatArray,
@@ -167,7 +173,7 @@ def frame_points(
     size: tuple[int, int],
     room: Room,
 ) -> Camera:
-    """The nearest camera in that direction that sees every point inside the room.
+    """The nearest camera in that direction that sees every point inside the room; `up` is the picture's.
 
     In camera axes (x right, y up, z back) an edge of the room is a plane through the camera: x - cx
     <= r (cz - z) for every point at the right edge's slope r, and so on. Left and right together
