@@ -28,7 +28,7 @@ from scipy.special import ndtr
 
 from condyle.model import load_skeleton
 from condyle.model.growth import sized_numbers
-from condyle.solver.block_banded import factored
+from condyle.solver.block_banded import factored, system_band
 from condyle.solver.frame_fit import fit_frames
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.posture import Posture
@@ -36,7 +36,6 @@ from condyle.solver.process_evidence import weigh
 from condyle.solver.process_prior import ProcessPrior
 from condyle.solver.time_derivatives import derivatives
 from condyle.solver.trial_estimate import TrialEstimate, smooth_trial
-from condyle.solver.trial_smoother import system_band
 
 FloatArray = NDArray[np.float64]
 RATE, SECONDS, NOISE, MISSING = 100.0, 4.0, 0.001, 0.05

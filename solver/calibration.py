@@ -6,7 +6,7 @@ is started (from the static alone, then with frames of movement) and put into wo
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -18,6 +18,16 @@ from condyle.recording.recording import Recording, is_seen, mean_positions
 from condyle.recording.still import still_part
 from condyle.solver.blas_threads import one_thread
 from condyle.solver.calibrated import Sources, calibrated
+from condyle.solver.calibration_faults import (
+    exchanged_markers,
+    little_told,
+    odd_sizes,
+    odd_standing,
+    one_frame,
+    stray_markers,
+    unsure_lengths,
+    wrong_stature,
+)
 from condyle.solver.cold_start import fit_cold
 from condyle.solver.frame_problem import FrameProblem, SkeletonFunctions
 from condyle.solver.least_squares import Bounds
@@ -29,7 +39,7 @@ from condyle.solver.person_functions import PersonFunctions
 from condyle.solver.person_priors import Given, PersonPriors
 from condyle.solver.person_problem import PersonProblem, PersonState
 from condyle.solver.posture import Posture
-from condyle.solver.results import Calibration
+from condyle.solver.results import Calibration, Fault
 from condyle.solver.skin_motion import REST_SHARE, SkinMotion, skin_motion
 from condyle.solver.static_faults import check_sides
 from condyle.solver.upright import Upright
@@ -94,14 +104,41 @@ def calibrate(
     priors = PersonPriors(skeleton, person.layout, Given(stature, lengths))
     estimate = _from_static(person, priors, mean, upright, float(alignment.scale[0]))
     sources = Sources(static, tuple(moving), still, matched, upright, stature, mass)
-    found = calibrated(estimate, sources)
+
+    def again(places: FloatArray, priors: PersonPriors = priors) -> PersonEstimate:
+        return _from_static(person, priors, places[None], upright, float(alignment.scale[0]))
+
+    faults = _faults(estimate, again, Given(stature, lengths), mean[0], bool(moving))
+    faults += one_frame(still.frames.stop - still.frames.start)
+    found = replace(calibrated(estimate, sources), faults=tuple(faults))
     if not moving:
         return found
     frames = moving_frames(
         found.skeleton, functions, moving, estimate.state.posture, upright, labels
     )
     estimate = estimate_person(*_with_movement(estimate, frames))
-    return calibrated(estimate, sources, frames)
+    return replace(calibrated(estimate, sources, frames), faults=tuple(faults))
+
+
+def _faults(
+    estimate: PersonEstimate,
+    again: Callable[..., PersonEstimate],
+    given: Given,
+    mean: FloatArray,
+    moving: bool,
+) -> list[Fault]:
+    """What looks wrong in the static, the gravest first; see `calibration_faults`."""
+    problem = estimate.problem
+    skeleton = problem.functions.functions.skeleton
+    found = exchanged_markers(estimate, again)
+    if not found:
+        found += stray_markers(estimate)
+    if given.stature is not None and skeleton.person is not None:
+        loose = PersonPriors(skeleton, problem.functions.layout, Given(None, given.lengths))
+        without = again(mean, loose)
+        found += wrong_stature(estimate, without, given.stature, skeleton.person.stature)
+    found += odd_standing(estimate) + odd_sizes(estimate)
+    return found + unsure_lengths(estimate) + little_told(estimate, moving=moving)
 
 
 def unsized(skeleton: Skeleton) -> Skeleton:

@@ -28,6 +28,7 @@ from numpy.typing import NDArray
 from scipy.linalg import lapack
 
 from condyle.solver.backends import backend
+from condyle.solver.bounded_search import least_between
 from condyle.solver.compiled_kernel import address, aligned
 from condyle.solver.kernel_source import LANE
 from condyle.solver.process_prior import difference_weights
@@ -112,9 +113,14 @@ def _of_order(
     freedoms = series.shape[1]
     ratio, kappa = np.zeros(freedoms), np.full(freedoms, least_kappa)
     likelihood, moving = np.zeros(freedoms), np.zeros(freedoms, dtype=bool)
-    for d in np.flatnonzero([bool(pieces(column)) for column in seen.T]):
-        one = _Series(series[:, d], variance[:, d], seen[:, d], order)
-        ratio[d], kappa[d], likelihood[d], moving[d] = one.best(least_kappa)
+    alike: dict[tuple[tuple[int, int], ...], list[int]] = {}
+    for d in range(freedoms):
+        parts = tuple((part.start, part.stop) for part in pieces(seen[:, d]))
+        if parts:
+            alike.setdefault(parts, []).append(d)
+    for group in alike.values():
+        one = _SeriesTogether(series[:, group], variance[:, group], seen[:, group], order)
+        ratio[group], kappa[group], likelihood[group], moving[group] = one.best(least_kappa)
     return likelihood, Evidence(order, ratio, kappa, moving)
 
 
@@ -154,7 +160,7 @@ def smoothed(series: FloatArray, precision: FloatArray, ratio: float, order: int
 
 @dataclass(frozen=True, slots=True)
 class _Piece:
-    """A part of a series without a long hole; precision in units of the series' median."""
+    """A part (frames, m) of m series without a long hole; precision in units of each series' median."""
 
     y: FloatArray
     precision: FloatArray
@@ -172,27 +178,30 @@ class _Piece:
 def smoothed_at(
     y: FloatArray, precision: FloatArray, squares: FloatArray, order: int, ratios: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
-    """RSS and log det A of a series without holes, for some r; infinite where rounding spoils A.
-
-    Many at once are left to the compiled kernel. One goes to LAPACK whether there is a kernel or not: where r
-    is large RSS has six digits, and the last of them would move the estimate from backend to backend.
+    """RSS and log det A (m,) of series without holes; infinite where rounding spoils A.
 
     Parameters
     ----------
-    y, precision : (frames,)
+    y, precision : (frames, m)
     squares : (order + 1, frames), Fortran order
         The lower band of D'D.
+    ratios : (m,)
+        r of each series.
     """
     library = backend().library
-    if library is None or len(ratios) == 1:
-        found = [_smoothed_by_lapack(y, precision, squares, order, ratio) for ratio in ratios]
+    if library is None:
+        found = [
+            _smoothed_by_lapack(y[:, i], precision[:, i], squares, order, ratio)
+            for i, ratio in enumerate(ratios)
+        ]
         return np.array([rss for rss, _ in found]), np.array([det for _, det in found])
     rss, determinant = np.empty(len(ratios)), np.empty(len(ratios))
     work = aligned(((order + 2) * len(y), LANE))
     given = [y, precision, squares.T, difference_weights(order), ratios]
     told = [np.ascontiguousarray(x, dtype=np.float64) for x in given]
-    if not y.shape == precision.shape == squares.shape[1:] or len(squares) != order + 1:
-        raise ValueError("a series and its precision differ in length")
+    shape = squares.shape[1], len(ratios)
+    if not y.shape == precision.shape == shape or len(squares) != order + 1:
+        raise ValueError("series and their precision differ in length")
     library.smooth_series(
         *(ctypes.c_long(x) for x in (len(y), order, len(ratios))),
         *(address(x) for x in (*told, work, rss, determinant)),
@@ -214,60 +223,63 @@ def _smoothed_by_lapack(
     return rss, 2 * float(np.log(factor[0]).sum())
 
 
-class _Series:
-    """One freedom's estimates and the marginal likelihood of its noise and process."""
+class _SeriesTogether:
+    """Some freedoms' estimates, all with the same pieces, and the marginal likelihood of each.
+
+    Parameters
+    ----------
+    y, variance : (frames, m)
+    seen : (frames, m) bool
+    order : int
+    """
 
     def __init__(self, y: FloatArray, variance: FloatArray, seen: BoolArray, order: int) -> None:
         self._order = order
         precision = np.where(seen, 1 / np.where(seen, variance, 1.0), 0.0)
-        self._scale = float(np.median(precision[seen]))
+        told = [column[here] for column, here in zip(y.T, seen.T, strict=True)]
+        self._scale = np.array(
+            [np.median(column[here]) for column, here in zip(precision.T, seen.T, strict=True)]
+        )
         # A constant costs the process nothing: without it RSS loses fewer digits.
-        y = np.where(seen, y - np.median(y[seen]), 0.0)
-        spread = max(float(np.var(y[seen])), np.finfo(float).tiny)
-        self._pieces, self._free, self._constant = [], 0, 0.0
-        for part in pieces(seen):
+        y = np.where(seen, y - [np.median(column) for column in told], 0.0)
+        spread = np.maximum([np.var(column) for column in told], np.finfo(float).tiny)
+        self._pieces = []
+        self._free, self._constant = np.zeros(y.shape[1]), np.zeros(y.shape[1])
+        for part in pieces(seen[:, 0]):
             frames = part.stop - part.start
             squares = _squares_band(order, frames)
             self._pieces.append(_Piece(y[part], precision[part] / self._scale, order, squares))
-            self._free += int(seen[part].sum()) - order
+            self._free += seen[part].sum(axis=0) - order
             self._constant += order * np.log(2 * np.pi * frames * spread)
             self._constant -= _log_determinant(order, frames)
         self._constant += self._free * np.log(2 * np.pi)
 
-    def _at(self, log_ratios: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """RSS and log det A - (N - p) log r, precisions in units of their median."""
+    def at(self, log_ratios: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """RSS and log det A - (N - p) log r (m,), precisions in units of their median."""
         rss, determinant = np.sum([piece.at(log_ratios) for piece in self._pieces], axis=0)
         return np.maximum(rss, np.finfo(float).tiny), determinant
 
-    def best(self, least_kappa: float) -> tuple[float, float, float, bool]:
-        """Give r, kappa and the log likelihood at the maximum, and whether anything moves."""
-        # Heavy, and only of use where a trial is smoothed.
-        from scipy.optimize import minimize_scalar
-
+    def best(self, least_kappa: float) -> tuple[FloatArray, FloatArray, FloatArray, BoolArray]:
+        """Give r, kappa and the log likelihood at the maximum, and whether anything moves (m,)."""
         low = -2 * self._order * np.log(2 * np.sin(np.pi * MOST_CUTOFF))
         high = np.log(MOST_RATIO)
         floor = least_kappa**2 / self._scale
 
         def twice_minus(log_ratios: FloatArray) -> FloatArray:
-            rss, determinant = self._at(log_ratios)
+            rss, determinant = self.at(log_ratios)
             noise = np.maximum(rss / self._free, floor)
             return np.asarray(
                 self._free * np.log(noise) + rss / noise + determinant + self._constant
             )
 
         coarse = np.linspace(low, high, COARSE_RATIOS)
-        at = int(np.argmin(twice_minus(coarse)))
-        around = (coarse[max(at - 1, 0)], coarse[min(at + 1, len(coarse) - 1)])
-        found = minimize_scalar(
-            lambda x: float(twice_minus(np.array([x]))[0]),
-            bounds=around,
-            method="bounded",
-            options={"xatol": RATIO_TOLERANCE},
-        )
-        noise = max(float(self._at(np.array([found.x]))[0][0]) / self._free, floor)
+        told = [twice_minus(np.full(len(floor), x)) for x in coarse]
+        at = np.argmin(told, axis=0)
+        around = coarse[np.maximum(at - 1, 0)], coarse[np.minimum(at + 1, len(coarse) - 1)]
+        place, value = least_between(twice_minus, *around, tolerance=RATIO_TOLERANCE)
+        noise = np.maximum(self.at(place)[0] / self._free, floor)
         kappa = np.sqrt(noise * self._scale)
-        moving = found.x < high - STILL
-        return float(np.exp(found.x)) * self._scale, float(kappa), -float(found.fun) / 2, moving
+        return np.exp(place) * self._scale, kappa, -value / 2, place < high - STILL
 
 
 def _squares_band(order: int, frames: int) -> FloatArray:

@@ -20,10 +20,6 @@ MARKER_LIMIT, MARKER_SHARE = 0.04, 0.01
 """m and share of frames; a marker off by more in more frames needs a look."""
 LIMIT_SHARE = 0.05
 """Share of frames at a limit above which it is worth saying."""
-ODD_PLACE = 3.0
-"""Departure from a nominal place, in expected departures per axis, above which it is worth saying."""
-PLACE_LIMIT = 0.03
-"""m; a landmark marker further from its nominal place than this is worth saying, whatever is expected."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,20 +154,7 @@ def calibration_findings(calibration: Calibration) -> list[Finding]:
                 needs_look=True,
             )
         )
-    for marker in calibration.markers:
-        if marker.departure is None or marker.placed_within is None:
-            continue
-        departure = float(np.linalg.norm(marker.departure))
-        expected = marker.placed_within * np.sqrt(3)
-        if departure > max(PLACE_LIMIT, ODD_PLACE * expected):
-            found.append(
-                Finding(
-                    f"marker {marker.name} sits {1000 * departure:.0f} mm from where the model "
-                    f"expects it (expected within {1000 * expected:.0f} mm)",
-                    "check that it is the marker its name says, on the side its name says",
-                    needs_look=True,
-                )
-            )
+    found += [Finding(f.what, f.do, needs_look=f.grave) for f in calibration.faults]
     if calibration.undetermined:
         found.append(
             Finding(

@@ -260,6 +260,22 @@ class PlacedMarker:
 
 
 @dataclass(frozen=True, slots=True)
+class Fault:
+    """Something of a static that must not be absorbed into sizes, or that is worth saying.
+
+    Attributes
+    ----------
+    what, do : str
+    grave : bool
+        Whether the calibration needs a look.
+    """
+
+    what: str
+    do: str
+    grave: bool = False
+
+
+@dataclass(frozen=True, slots=True)
 class KnownBetter:
     """One number of a person: what was expected of it, and what is known now.
 
@@ -325,6 +341,8 @@ class Calibration:
     known_better : KnownBetters
     movement : MovementUsed or None
         None where only a static served.
+    faults : Faults
+        Of the static.
     """
 
     skeleton: Skeleton
@@ -344,3 +362,4 @@ class Calibration:
     covariance: SubjectCovariance
     known_better: tuple[KnownBetter, ...] = ()
     movement: MovementUsed | None = None
+    faults: tuple[Fault, ...] = ()

@@ -15,7 +15,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.solver.block_banded import system_band  # noqa: F401 - benchmarks look for it here
 from condyle.solver.covariances import all_pairs
 from condyle.solver.frame_problem import FrameProblem
 from condyle.solver.least_squares import Bounds
