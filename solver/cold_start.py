@@ -73,7 +73,7 @@ def fit_cold(
     tell = watch or (lambda _share: None)
     rows = np.unique(np.r_[np.arange(0, frames, COARSE_STEP), frames - 1])
     coarse_problem, coarse_bounds = problem.take(rows), bounds.take(rows)
-    coarse = _staged(coarse_problem, coarse_bounds, coarse_problem.rest())
+    coarse = staged(coarse_problem, coarse_bounds, coarse_problem.rest())
     coarse = _from_neighbours(coarse_problem, coarse_bounds, coarse)
     tell(0.2)
     start = _between(rows, coarse.posture, frames)
@@ -228,7 +228,7 @@ def _nearest_sufficient(problem: FrameProblem, root: str, reference: FloatArray)
     return chosen
 
 
-def _staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
+def staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
     """Fit with the marker weights switched on from the roots outwards."""
     posture = laid_on_root_markers(problem, start)
     depth = np.full(len(problem.functions.skeleton.markers), -1)
@@ -293,8 +293,8 @@ def _restarted(
         if not len(bad):
             break
         part, limits = problem.take(bad), bounds.take(bad)
-        start = part.rest() if attempt == 0 else _random_posture(part, limits, rng)
-        tried = _staged(part, limits, start)
+        start = part.rest() if attempt == 0 else random_posture(part, limits, rng)
+        tried = staged(part, limits, start)
         again = np.abs(tried.cost - solution.cost[bad]) <= 1e-6 * solution.cost[bad]
         lower = tried.cost < solution.cost[bad] * (1 - 1e-6)
         believed[bad] = np.where(lower, 0, believed[bad] + again)
@@ -302,7 +302,7 @@ def _restarted(
     return solution
 
 
-def _random_posture(problem: FrameProblem, bounds: Bounds, rng: np.random.Generator) -> Posture:
+def random_posture(problem: FrameProblem, bounds: Bounds, rng: np.random.Generator) -> Posture:
     rest = problem.rest()
     limited = np.isfinite(bounds.lower) & np.isfinite(bounds.upper)
     low = np.where(limited, bounds.lower, rest.scalars)

@@ -34,7 +34,7 @@ CLOUD_OPACITY, CLOUD_HIDDEN = 0.34, 0.16
 CLOUD_BALL = (32, 20)
 """Corners of an ellipsoid, round it and from pole to pole."""
 
-AXIS_LENGTH, AXIS_BAR = 0.05, 0.0020
+AXIS_LENGTH, AXIS_BAR = 0.038, 0.0018
 """Half of what is drawn of a joint's axis, and its radius, as shares of the picture's visible height."""
 
 FORCE_BAR = 0.0042

@@ -173,7 +173,7 @@ def start_worker(window: str | None, complaints: IO[bytes]) -> subprocess.Popen[
     environment = {
         **os.environ,
         "EGL_LOG_LEVEL": "fatal",
-        "LP_NUM_THREADS": "1",
+        "LP_NUM_THREADS": "0",  # Mesa draws in the calling thread: a core a worker, nothing handed over
         "OMP_NUM_THREADS": "1",
         "OPENBLAS_NUM_THREADS": "1",
         **({WINDOW_VARIABLE: window} if window else {}),

@@ -14,8 +14,6 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-from condyle.viz.offscreen import open_pyvista
-
 FloatArray = NDArray[np.float64]
 
 FINEST, COARSEST = 0.003, 0.0045
@@ -257,11 +255,26 @@ def skin(
     spacing : float, optional
         m, of the grid; by default what suits the thinnest shape.
     """
-    pyvista = open_pyvista()
+    # VTK's filters alone: bones are wanted (a report's, say) where nothing can be drawn too.
+    from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
+    from vtkmodules.vtkCommonDataModel import vtkImageData
+    from vtkmodules.vtkFiltersCore import vtkFlyingEdges3D
+
     field, origin, step = sample(shapes, blend, carved, spacing)
-    grid = pyvista.ImageData(dimensions=field.shape, spacing=(step,) * 3, origin=origin)
-    grid["depth"] = -field.ravel(order="F")  # VTK's normals point to where the value falls
-    mesh = grid.contour([0.0], scalars="depth", method="flying_edges", compute_normals=True)
-    normals = np.asarray(mesh.point_data["Normals"], dtype=np.float64)
-    faces = np.asarray(mesh.faces, dtype=np.int64).reshape(-1, 4)[:, 1:]
-    return Surface(np.asarray(mesh.points, dtype=np.float64), normals, faces)
+    grid = vtkImageData()
+    grid.SetDimensions(*field.shape)
+    grid.SetSpacing(step, step, step)
+    grid.SetOrigin(*origin)
+    depth = -field.ravel(order="F")  # VTK's normals point to where the value falls
+    grid.GetPointData().SetScalars(numpy_to_vtk(depth, deep=True))
+    contour = vtkFlyingEdges3D()
+    contour.SetInputData(grid)
+    contour.SetValue(0, 0.0)
+    contour.ComputeNormalsOn()
+    contour.ComputeGradientsOff()
+    contour.Update()
+    mesh = contour.GetOutput()
+    points = vtk_to_numpy(mesh.GetPoints().GetData()).astype(np.float64)
+    normals = vtk_to_numpy(mesh.GetPointData().GetNormals()).astype(np.float64)
+    faces = vtk_to_numpy(mesh.GetPolys().GetConnectivityArray()).astype(np.int64).reshape(-1, 3)
+    return Surface(points, normals, faces)

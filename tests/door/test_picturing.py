@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import json
 import shutil
+import subprocess
+import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
 
@@ -181,5 +183,23 @@ def test_without_graphics_everything_else_goes_on(study: Path, run: Run, tmp_pat
     asked = ("-o", tmp_path, "--from", 2.0, "--to", 2.1, "--no-smooth")
     assert run("solve", study / "subject.yaml", trial, *asked).exit_code in (0, 1)
     assert (tmp_path / "step_up" / "fit.json").is_file()
+    assert run("report", tmp_path / "step_up").exit_code in (0, 1)
+    assert (tmp_path / "step_up" / "report.html").is_file()
     assert run("check", "lower_limbs").exit_code == 0
     assert run("recording", trial).exit_code == 0
+
+
+PLAIN_BONE = """
+import sys
+import numpy as np
+from condyle.viz.shapes import Ball, skin
+surface = skin([Ball(np.zeros(3), np.full(3, 0.02))], blend=0.001)
+print(len(surface.faces) > 100, "pyvista" in sys.modules, "vtkmodules.vtkRenderingCore" in sys.modules)
+"""
+
+
+def test_a_bone_is_made_without_touching_what_draws() -> None:
+    child = subprocess.run(
+        [sys.executable, "-c", PLAIN_BONE], capture_output=True, text=True, check=True, timeout=60
+    )
+    assert child.stdout.split() == ["True", "False", "False"]

@@ -233,10 +233,10 @@ def test_an_unknown_row_or_view_is_told(leg: FittedMotion) -> None:
 
 
 def test_a_contact_sheet_has_as_many_panels_as_asked_for(leg: FittedMotion) -> None:
-    three, nine = (draw_contact_sheet(leg, panels=count) for count in (3, 9))
-    assert three.width == nine.width == 1600
-    assert nine.height > three.height
-    for sheet in (three, nine):
+    eight, sixteen = (draw_contact_sheet(leg, panels=count) for count in (8, 16))
+    assert eight.width == sixteen.width == 1600
+    assert sixteen.height > eight.height
+    for sheet in (eight, sixteen):
         assert above_legend(orange(sheet)).sum() > 50
         assert not dark(sheet)[:, -8:].any()
 
