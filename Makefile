@@ -25,7 +25,7 @@ bench: $(READY)
 	$(BIN)/python benchmarks/solver_growth.py
 	$(BIN)/python benchmarks/trial_estimates.py 40
 	$(BIN)/python benchmarks/calibration_coverage.py 30
-	$(BIN)/python benchmarks/calibration.py 100
+	$(BIN)/python benchmarks/calibration.py 40
 	$(BIN)/python benchmarks/calibration_real.py
 
 format: $(READY)

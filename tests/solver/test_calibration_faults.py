@@ -77,7 +77,7 @@ def row(name: str) -> int:
 
 def test_a_sound_static_gets_no_alarm(told: Told) -> None:
     alarms = [
-        [f.what for f in told(someone(seed), stature=STATURE) if f.needs_look] for seed in range(20)
+        [f.what for f in told(someone(seed), stature=STATURE) if f.needs_look] for seed in range(12)
     ]
     assert sum(bool(a) for a in alarms) <= 1, alarms
 
