@@ -201,6 +201,10 @@ draw_film(pickle.load(open(sys.argv[1], "rb")), [Path(sys.argv[2])], Look(size=(
 """
 
 
+def listening() -> None:
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
+
+
 @pytest.mark.skipif(not hasattr(signal, "pthread_sigmask"), reason="Ctrl-C as POSIX sends it")
 def test_ctrl_c_leaves_no_file_and_no_process(leg: FittedMotion, tmp_path: Path) -> None:
     import pickle
@@ -214,6 +218,8 @@ def test_ctrl_c_leaves_no_file_and_no_process(leg: FittedMotion, tmp_path: Path)
         stderr=subprocess.PIPE,
         text=True,
         start_new_session=True,
+        # Tests may run in the background of a shell, which hands on a deaf ear to Ctrl-C.
+        preexec_fn=listening,  # noqa: PLW1509
     )
     assert child.stdout is not None
     assert child.stdout.readline()  # drawing has begun
