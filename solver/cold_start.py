@@ -16,7 +16,7 @@ from scipy.spatial.transform import Rotation, Slerp
 
 from condyle.model.skeleton import LABORATORY, Floating, Joint
 from condyle.solver.frame_problem import FrameProblem
-from condyle.solver.least_squares import Bounds, Solution, minimise
+from condyle.solver.least_squares import MOST_ROUNDS, TOLERANCE, Bounds, Solution, minimise
 from condyle.solver.posture import Posture, quaternions_of, rotations
 from condyle.solver.rigid_alignment import align
 
@@ -27,7 +27,9 @@ FRAMES_AT_ONCE = 4096
 """That are fitted together: many enough that Python's own cost is small, few enough for the cache."""
 COARSE_STEP = 10
 """Every tenth frame is started cold; between two of them a person moves little."""
-STAGE_ROUNDS, STAGE_TOLERANCE, STAGE_DAMPING = 15, 1e-2, 1e-3
+STAGE_ROUNDS, STAGE_TOLERANCE, STAGE_DAMPING = 15, 1e-1, 1e-3
+COARSE_ROUNDS, COARSE_TOLERANCE = 30, 1e-2
+"""The coarse frames only say where others start, themselves included."""
 BAD_FACTOR = 3.0
 """A frame fits badly when its cost per marker exceeds this many medians."""
 MOST_RESTARTS = 20
@@ -73,7 +75,13 @@ def fit_cold(
     tell = watch or (lambda _share: None)
     rows = np.unique(np.r_[np.arange(0, frames, COARSE_STEP), frames - 1])
     coarse_problem, coarse_bounds = problem.take(rows), bounds.take(rows)
-    coarse = staged(coarse_problem, coarse_bounds, coarse_problem.rest())
+    coarse = staged(
+        coarse_problem,
+        coarse_bounds,
+        coarse_problem.rest(),
+        tolerance=COARSE_TOLERANCE,
+        most_rounds=COARSE_ROUNDS,
+    )
     coarse = _from_neighbours(coarse_problem, coarse_bounds, coarse)
     tell(0.2)
     start = _between(rows, coarse.posture, frames)
@@ -95,9 +103,11 @@ def tightened(
     bounds: Bounds,
     *,
     damping: float,
+    tolerance: float = TOLERANCE,
+    most_rounds: int = MOST_ROUNDS,
     watch: Callable[[int], None] | None = None,
 ) -> Solution:
-    """Minimise with the ties tightened step by step down to their own sd.
+    """Minimise with the ties tightened step by step down to their own sd; see `minimise`.
 
     Parameters
     ----------
@@ -114,6 +124,8 @@ def tightened(
                 start.take(rows),
                 bounds.take(rows),
                 damping=damping,
+                tolerance=tolerance,
+                most_rounds=most_rounds,
                 watch=_with_more(watch, left),
             )
         )
@@ -146,6 +158,8 @@ def _tightened(
     bounds: Bounds,
     *,
     damping: float,
+    tolerance: float,
+    most_rounds: int,
     watch: Callable[[int], None] | None,
 ) -> Solution:
     least = problem.functions.ties.sd.min(initial=np.inf)
@@ -154,7 +168,15 @@ def _tightened(
             softer = problem.with_tie_softness(softness)
             start = minimise(softer, start, bounds, damping=damping, most_rounds=60).posture
             damping = 1e-8
-    return minimise(problem, start, bounds, damping=damping, watch=watch)
+    return minimise(
+        problem,
+        start,
+        bounds,
+        damping=damping,
+        tolerance=tolerance,
+        most_rounds=most_rounds,
+        watch=watch,
+    )
 
 
 def laid_on_root_markers(problem: FrameProblem, posture: Posture) -> Posture:
@@ -228,8 +250,15 @@ def _nearest_sufficient(problem: FrameProblem, root: str, reference: FloatArray)
     return chosen
 
 
-def staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
-    """Fit with the marker weights switched on from the roots outwards."""
+def staged(
+    problem: FrameProblem,
+    bounds: Bounds,
+    start: Posture,
+    *,
+    tolerance: float = TOLERANCE,
+    most_rounds: int = MOST_ROUNDS,
+) -> Solution:
+    """Fit with the marker weights switched on from the roots outwards; then as `minimise` has it."""
     posture = laid_on_root_markers(problem, start)
     depth = np.full(len(problem.functions.skeleton.markers), -1)
     for joint in problem.functions.skeleton.joints:
@@ -246,7 +275,14 @@ def staged(problem: FrameProblem, bounds: Bounds, start: Posture) -> Solution:
             tolerance=STAGE_TOLERANCE,
             most_rounds=STAGE_ROUNDS,
         ).posture
-    return tightened(problem, posture, bounds, damping=STAGE_DAMPING)
+    return tightened(
+        problem,
+        posture,
+        bounds,
+        damping=STAGE_DAMPING,
+        tolerance=tolerance,
+        most_rounds=most_rounds,
+    )
 
 
 def _better(old: Solution, rows: IntArray, new: Solution) -> Solution:
@@ -303,6 +339,7 @@ def _restarted(
 
 
 def random_posture(problem: FrameProblem, bounds: Bounds, rng: np.random.Generator) -> Posture:
+    """A posture anywhere within the ranges, orientations anyhow; where there is no range, at rest."""
     rest = problem.rest()
     limited = np.isfinite(bounds.lower) & np.isfinite(bounds.upper)
     low = np.where(limited, bounds.lower, rest.scalars)
